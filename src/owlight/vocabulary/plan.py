@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 
+from owlight.quantity import words
+from owlight.vocabulary.terms import RECEIVED_POWER, TERMS
 from owlight.vocabulary.values import Setting, Term, Value
 
 
@@ -83,6 +85,17 @@ class Point:
 
     def value(self, term: Term) -> Value | None:
         return next((setting.value for setting in self.settings if setting.term == term), None)
+
+    @property
+    def group(self) -> str:
+        """The curve it belongs to: the settings of all axes but received power, in words; "" if there are none."""
+        return ", ".join(_in_words(s) for s in self.settings if s.term != RECEIVED_POWER)
+
+
+def _in_words(setting: Setting) -> str:
+    if isinstance(setting.value, float):
+        return f"{setting.term} {words(setting.value, TERMS[setting.term].unit)}"
+    return f"{setting.term} {setting.value}"
 
 
 @dataclass(frozen=True)
