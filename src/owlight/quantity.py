@@ -58,7 +58,7 @@ def watts(power_dbm: float) -> float:
     >>> watts(0.0)
     0.001
     """
-    return 1e-3 * 10.0 ** (power_dbm / 10.0)
+    return 1e-3 * math.pow(10.0, power_dbm / 10.0)
 
 
 def dbm(power_w: float) -> float:
@@ -89,6 +89,15 @@ def optical_frequency_hz(vacuum_wavelength_nm: float) -> float:
     return SPEED_OF_LIGHT_M_PER_S / (vacuum_wavelength_nm * 1e-9)
 
 
+def kind_of(unit: str) -> str:
+    """What a person should write where `unit` is needed.
+
+    >>> kind_of("dB")
+    'a ratio (dB)'
+    """
+    return _KINDS.get(unit, f"a value in {unit}")
+
+
 def parse(text: str, unit: str) -> float:
     """The number in `unit`, or ValueError whose words say what is allowed.
 
@@ -100,7 +109,7 @@ def parse(text: str, unit: str) -> float:
     Traceback (most recent call last):
     ValueError: '-38 dB' is a ratio (dB), but a level (dBm or W) is needed here
     """
-    wanted = _KINDS.get(unit, f"a value in {unit}")
+    wanted = kind_of(unit)
     match = _NUMBER.match(text)
     if match is None:
         raise ValueError(f"{text!r} is not a quantity; write a number and a unit: {wanted}")
