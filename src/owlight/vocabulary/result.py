@@ -92,11 +92,12 @@ class BudgetLine:
 
 @dataclass(frozen=True)
 class Penalty:
-    """`reference` names what the sensitivity is held against; `u_db` may be None when not known."""
+    """`reference` names what the sensitivity is held against."""
 
     reference: str
     penalty_db: float
     reference_dbm: float
+    group: str = ""
 
 
 @dataclass(frozen=True)
