@@ -1,0 +1,41 @@
+"""What the logbook holds: logbook, show, report."""
+
+from __future__ import annotations
+
+import json
+
+import typer
+
+from owlight.cli.options import LOGBOOK, Folder, Json, Run
+
+
+def logbook(logbook: Folder = LOGBOOK, as_json: Json = False) -> None:
+    """List the runs of a logbook, newest first."""
+    from owlight.cli.result import print_runs
+    from owlight.jobs.listing import listing
+
+    found = listing(logbook)
+    if as_json:
+        print(json.dumps({"logbook": str(logbook), "runs": found}))
+    else:
+        print_runs(found, logbook)
+
+
+def show(run: Run = "last", logbook: Folder = LOGBOOK, as_json: Json = False) -> None:
+    """Show one run: its curve, its sensitivity, its findings."""
+    from owlight.cli.result import print_result
+    from owlight.jobs.summary import summary
+
+    found = summary(logbook, run)
+    if as_json:
+        print(json.dumps(found))
+    else:
+        print_result(found, None)
+
+
+def report(run: Run = "last", logbook: Folder = LOGBOOK, as_json: Json = False) -> None:
+    """Write the run's report, one HTML page that stands alone."""
+    from owlight.jobs.report import report as write
+
+    page = write(logbook, run)
+    typer.echo(json.dumps({"report": str(page)}) if as_json else f"{page}")

@@ -1,0 +1,33 @@
+"""One capture from anywhere, no bench."""
+
+from __future__ import annotations
+
+import json
+from pathlib import Path
+
+import typer
+
+from owlight.cli.options import Json
+
+
+def demodulate(
+    file: Path = typer.Argument(metavar="FILE", help="Capture: .npz with `codes`, lanes x samples, integer."),
+    symbol_rate: str = typer.Option(..., help='For example "32 GBd".'),
+    sample_rate: str = typer.Option(..., help='For example "80 GS/s".'),
+    modulation: str = typer.Option("QPSK", help="Format of the symbols."),
+    polarisations: int = typer.Option(2, min=1, max=2, help="1 or 2."),
+    rolloff: float = typer.Option(0.1, min=0.0, max=1.0, help="Roll-off of the root-raised-cosine pulse."),
+    reference: str = typer.Option("15", help="Labels as .npy (polarisations x pattern length), or a pattern's order."),
+    as_json: Json = False,
+) -> None:
+    """Demodulate one capture and count its errors."""
+    from owlight.cli.result import print_demodulation
+    from owlight.jobs.demodulate import FileSignal, demodulate_file
+
+    signal = FileSignal(symbol_rate, sample_rate, modulation, polarisations, rolloff, reference)
+    found = demodulate_file(file, signal)
+    if as_json:
+        print(json.dumps(found))
+    else:
+        print_demodulation(found)
+    raise typer.Exit(0 if found["status"] == "locked" else 1)

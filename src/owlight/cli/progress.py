@@ -1,0 +1,65 @@
+"""Progress on stderr: a line a stay, with the time left judged from the stays so far."""
+
+from __future__ import annotations
+
+import time  # noqa: TID251  only for the time left on the screen, never for the measurement
+from typing import TextIO
+
+from owlight.vocabulary.events import AttemptFinished, Event, Note, SafeState, SegmentStarted
+from owlight.vocabulary.plan import Plan
+
+
+class Progress:
+    """`show` never raises: what happens to a screen must not happen to a night."""
+
+    def __init__(self, stream: TextIO) -> None:
+        self._stream = stream
+        self._done = 0
+        self._began_s: float | None = None
+
+    def say(self, words: str) -> None:
+        try:
+            print(words, file=self._stream, flush=True)
+        except (OSError, ValueError):
+            pass  # the terminal was closed; the run goes on and the logbook has everything
+
+    def show(self, plan: Plan, event: Event) -> None:
+        if isinstance(event, SegmentStarted):
+            mark = " (simulated)" if plan.simulated else ""
+            self.say(f"{plan.name}{mark}: {sum(len(p) for p in plan.order)} stays at {len(plan.points)} points")
+        elif isinstance(event, Note):
+            self.say(f"  {event.severity}: {event.words}")
+        elif isinstance(event, SafeState):
+            self.say("Bench safe, confirmed." if event.confirmed else "Safe state NOT confirmed; see below.")
+        elif isinstance(event, AttemptFinished):
+            self._stay(plan, event)
+
+    def _stay(self, plan: Plan, event: AttemptFinished) -> None:
+        now_s = time.monotonic()
+        self._began_s = now_s if self._began_s is None else self._began_s
+        self._done += 1
+        total = max(sum(len(p) for p in plan.order), self._done)
+        left = ""
+        if self._done > 1:
+            left_s = (now_s - self._began_s) / (self._done - 1) * (total - self._done)
+            left = f"  about {left_s:.0f} s left" if left_s < 120 else f"  about {left_s / 60:.0f} min left"
+        self.say(f"  {self._done:3}/{total}  {_words(event)}{left}")
+
+    def close(self) -> None:
+        self._stream.flush()
+
+
+def _words(event: AttemptFinished) -> str:
+    power = event.received_power.received_power_dbm if event.received_power else None
+    where = f"point {event.attempt.point.index}" if power is None else f"{power:8.3f} dBm"
+    if event.outcome == "failed":
+        return f"{where}  failed: {event.reason}"
+    locked = [d for d in event.demodulations if d.status == "locked"]
+    errors, bits = sum(d.errors for d in locked), sum(d.bits for d in locked)
+    if not event.demodulations:
+        return where
+    if not locked:
+        return f"{where}  no lock: {event.demodulations[-1].reason}"
+    return f"{where}  {errors:6} errors in {bits} bits" + (
+        f"  BER {errors / bits:.2e}" if errors else "  (upper limit)"
+    )

@@ -1,0 +1,144 @@
+"""Results in words: the number first, then what speaks against it, then where everything lies."""
+
+from __future__ import annotations
+
+import os
+from pathlib import Path
+from typing import Any
+
+from owlight.cli.drawing import draw_curve
+from owlight.jobs.fitted import fitted_ber
+
+Json = dict[str, Any]
+
+
+def print_result(found: Json, bench: str | None) -> None:
+    """The run as `demo`, `run` and `show` give it."""
+    mark = "  -  SIMULATED, not a measurement of hardware" if found["simulated"] else ""
+    print(f"\n{found['sequence']}{mark}")
+    print(f"run {found['run_id']}: {found['state']}" + (f" ({found['reason']})" if found["reason"] else "") + "\n")
+    threshold = found["threshold"]
+    for group in dict.fromkeys(point["group"] for point in found["points"]):
+        _print_curve(found, group, threshold["ber"] if threshold else None)
+    if not found["sensitivities"]:
+        print(f"No sensitivity: {found['words']}")
+    print_findings(found["findings"])
+    if found["safe_state"] is not None:
+        print_safe_state(found["safe_state"])
+    elif found["state"] != "measuring":
+        print("Safe state: nothing was set, so nothing was made safe.")
+    print(f"\nlogbook  {found['logbook']}")
+    if "report" in found:
+        print(f"report   {found['report']}")
+    _print_next(found, bench)
+
+
+def _print_curve(found: Json, group: str, threshold_ber: float | None) -> None:
+    points = [point for point in found["points"] if point["group"] == group]
+    sensitivity = next((s for s in found["sensitivities"] if s["group"] == group), None)
+    if group:
+        print(group)
+    curve = None
+    if sensitivity is not None:
+        fitted: Json = sensitivity
+
+        def curve(powers_dbm: list[float]) -> list[float]:
+            return fitted_ber(fitted, found["modulation"], powers_dbm)
+
+    print(draw_curve(points, threshold_ber, curve))
+    print()
+    if sensitivity is not None:
+        _print_sensitivity(found, sensitivity)
+
+
+def _print_sensitivity(found: Json, s: Json) -> None:
+    threshold = found["threshold"]
+    print(f"Sensitivity  {s['received_power_dbm']:.3f} dBm" + ("  (extrapolated)" if s["extrapolated"] else ""))
+    percent = round(100 * s["coverage"])
+    print(f"  statistical {percent} %  {s['statistical_low_dbm']:.3f} to {s['statistical_high_dbm']:.3f} dBm")
+    print(f"  total {percent} %        {s['low_dbm']:.3f} to {s['high_dbm']:.3f} dBm")
+    print(f"  received power at {found['reference_plane']}; {found['power_convention']}")
+    print(f"  at BER {threshold['ber']:g} ({threshold['name']}); {s['method']}")
+    for penalty in found["penalties"]:
+        if penalty["group"] == s["group"]:
+            print(f"  {penalty['penalty_db']:.2f} dB above {penalty['reference']} ({penalty['reference_dbm']:.2f} dBm)")
+    print()
+
+
+def print_findings(findings: list[Json]) -> None:
+    """Only what is not ok; how many were is said."""
+    not_ok = [check for check in findings if check["finding"] != "ok"]
+    print(f"Findings: {len(findings) - len(not_ok)} ok, {len(not_ok)} not")
+    for check in not_ok:
+        print(f"  {check['finding']:13} {check['name']}, {check['subject']}: {check['words']}")
+
+
+def print_safe_state(safe: Json) -> None:
+    print("Safe state: " + ("confirmed by read-back" if safe["confirmed"] else "NOT CONFIRMED"))
+    for step in safe["steps"]:
+        word = "confirmed" if step["confirmed"] else "UNCONFIRMED"
+        print(f"  {step['role']:17} {step['words']}: {word} (read back {step['read_back'] or 'nothing'})")
+
+
+def _print_next(found: Json, bench: str | None) -> None:
+    folder = _quoted(Path(found["logbook"]).parent)
+    run = found["run_id"][:8]
+    print("\nNext:")
+    print(f"  {program()} show {run} --logbook {folder}")
+    print(f"  {program()} reproduce {run} --logbook {folder}")
+    if bench is None:
+        print(f"  {program()} report {run} --logbook {folder}")
+    else:
+        print(f"  {program()} forecast lo_power_map --bench {bench}")
+
+
+def program() -> str:
+    """How this program was started, so that the commands shown can be pasted."""
+    return os.environ.get("OWLIGHT_STARTED_AS", "owlight")
+
+
+def _quoted(path: Path) -> str:
+    text = str(path)
+    return f'"{text}"' if " " in text else text
+
+
+def print_runs(found: list[Json], folder: Path) -> None:
+    if not found:
+        print(f"The logbook in {folder} holds no run.")
+    for run in found:
+        mark = " simulated" if run["simulated"] else ""
+        print(f"{run['run_id'][:8]}  {run['started_utc'][:19]}Z  {run['state']:10}  {run['name']}{mark}")
+
+
+def print_reproduction(found: Json) -> None:
+    """Identical or not, and what differs."""
+    if found["identical"]:
+        print(f"Identical: all {found['captures_compared']} captures are the same byte for byte.")
+    else:
+        print(f"Not identical; {found['captures_compared']} captures compared, {found['captures_equal']} equal.")
+    for line in found["differences"]:
+        print(f"  {line}")
+    for name in ("original", "reproduced"):
+        s = found[f"sensitivity_{name}"]
+        words = (
+            "none" if s is None else f"{s['received_power_dbm']:.3f} dBm ({s['low_dbm']:.3f} to {s['high_dbm']:.3f})"
+        )
+        print(f"  sensitivity {name}: {words}")
+    print_safe_state(found["safe_state"]) if found["safe_state"] else None
+
+
+def print_demodulation(found: Json) -> None:
+    """One capture's journey, a row a stage, then what was counted."""
+    for stage in found["stages"]:
+        figures = ", ".join(f"{name} {value:.4g}" for name, value in stage["figures"].items())
+        print(f"{stage['stage']:20} {figures}")
+    print(f"\n{found['status']}" + (f": {found['reason']}" if found["reason"] else ""))
+    if found["status"] != "locked":
+        return
+    for tributary in found["tributaries"]:
+        print(f"  {tributary['name']}: {tributary['errors']} errors in {tributary['bits']} bits")
+    if found["ber"] is None:
+        print(f"  BER below {found['ber_high']:.3g} (no error seen, 95 %)")
+    else:
+        print(f"  BER {found['ber']:.4g} ({found['ber_low']:.4g} to {found['ber_high']:.4g}, 95 %)")
+    print(f"  SNR {found['snr_db']:.2f} dB, EVM {found['evm_percent']:.1f} %, GMI {found['gmi_bits']:.3f} bit")

@@ -1,0 +1,138 @@
+"""The verb `run`: plan, logbook, guard, open bench, loop, conclusion - put together here and nowhere else."""
+
+from __future__ import annotations
+
+import json
+import sys
+from collections.abc import Callable
+from dataclasses import dataclass
+from pathlib import Path
+
+from owlight.errors import BenchError, StorageError
+from owlight.guard import Guard
+from owlight.instrument.open_bench import open_bench
+from owlight.jobs.bench_session import Surroundings, surroundings
+from owlight.jobs.conclude import conclude
+from owlight.jobs.planning import plan_of
+from owlight.jobs.resolve import Resolved
+from owlight.jobs.software import provenance
+from owlight.link import Stamper
+from owlight.logbook import Logbook, RunWriter
+from owlight.run.attended import AttendedClock, StopRequests
+from owlight.run.night import Night
+from owlight.run.runner import Outcome, run
+from owlight.run.waiting import Demodulator
+from owlight.vocabulary.captures import Capture
+from owlight.vocabulary.events import Emit, Event, Note, SegmentEnded, SegmentStarted
+from owlight.vocabulary.plan import Plan
+
+GUARD_SILENCE_S = 60.0
+"""Longer than any single exchange's own deadline, shorter than a person would leave light unattended."""
+
+Show = Callable[[Plan, Event], None]
+
+
+@dataclass(frozen=True)
+class Order:
+    """What is asked of one run, beside the resolved files."""
+
+    folder: Path
+    world: Path | None
+    command_line: str
+    seed: int | None = None
+    reproduces: str | None = None
+    say: Callable[[str], None] = lambda words: None
+    show: Show = lambda plan, event: None
+
+
+@dataclass(frozen=True)
+class Measured:
+    run_id: str
+    outcome: Outcome
+
+
+def measure(resolved: Resolved, order: Order) -> Measured:
+    """Measure a whole sequence. Files and limits are judged before anything is opened or written."""
+    plan_of(resolved, seed=order.seed)
+    stop = StopRequests(say=order.say)
+    with stop.on_signals(), surroundings(resolved.bench, order.world) as around:
+        plan = plan_of(resolved, around.resources, order.seed)
+        with Logbook.open(order.folder) as logbook:
+            writer = logbook.start_run(plan, provenance(order.command_line, order.reproduces))
+            try:
+                outcome = _night(resolved, plan, order, around, stop, writer)
+                writer.conclude(conclude(plan, order.folder, writer.run_id, resolved.bench))
+            finally:
+                writer.close()
+    return Measured(writer.run_id, outcome)
+
+
+def _night(
+    resolved: Resolved, plan: Plan, order: Order, around: Surroundings, stop: StopRequests, writer: RunWriter
+) -> Outcome:
+    log = order.folder / "guard.jsonl"
+    guard = Guard.start(plan.safe_state, silence_s=GUARD_SILENCE_S, log=log, end_after_s=None)
+    clock = AttendedClock(around.clock, stop, guard.beat, around.real_time)
+    demodulator = Demodulator(plan.chain, clock.beat) if plan.chain is not None and plan.capture is not None else None
+    stamper = Stamper(clock)
+    emit = _emitter(plan, order, writer)
+    try:
+        bench = open_bench(resolved.bench, resolved.drivers, around.resources, emit, clock, beat=clock.beat)
+    except BenchError as trouble:
+        return _not_opened(stamper, emit, trouble, guard, demodulator)
+    try:
+        with bench:
+            night = Night(
+                plan=plan,
+                bench=bench,
+                emit=emit,
+                clock=clock,
+                stamper=bench.stamper,
+                stop=stop,
+                demodulate_later=demodulator.later if demodulator else None,
+                announce=around.announce,
+            )
+            return run(night)
+    finally:
+        guard.done()
+        if demodulator:
+            demodulator.close(at_once=stop.level >= 2)
+
+
+def _not_opened(
+    stamper: Stamper, emit: Emit, trouble: BenchError, guard: Guard, demodulator: Demodulator | None
+) -> Outcome:
+    """No setting was sent, so there is nothing to make safe; the reason is kept with the run."""
+    guard.done()
+    if demodulator:
+        demodulator.close(at_once=True)
+    emit(SegmentStarted(stamper.stamp(), 1, "started"))
+    emit(Note(stamper.stamp(), "fault", str(trouble), getattr(trouble, "role", "")))
+    emit(SegmentEnded(stamper.stamp(), "gave up", str(trouble)))
+    return Outcome("gave up", str(trouble), None)
+
+
+def _emitter(plan: Plan, order: Order, writer: RunWriter) -> Emit:
+    """Durable first, then shown; what storage refuses goes to the side file and the screen, so that it is not lost."""
+
+    def emit(event: Event) -> None:
+        try:
+            writer.record(event)
+        except StorageError:
+            _last_words(order.folder, event)
+            raise
+        order.show(plan, event)
+
+    return emit
+
+
+def _last_words(folder: Path, event: Event) -> None:
+    if isinstance(event, Capture):
+        return
+    line = json.dumps({type(event).__name__: repr(event)})
+    print(f"not stored: {line}", file=sys.stderr)
+    try:
+        with (folder / "last_words.jsonl").open("a", encoding="utf-8") as side:
+            side.write(line + "\n")
+    except OSError:
+        pass  # the disk that refused the logbook may refuse this too; the line is on the screen

@@ -1,0 +1,90 @@
+"""One run as one object: what `show`, `run` and `demo` print and what other programs read."""
+
+from __future__ import annotations
+
+from dataclasses import asdict
+from pathlib import Path
+from typing import Any
+
+from owlight.logbook.read import curve, open_reader, provenance, runs
+from owlight.vocabulary.plan import Plan
+from owlight.vocabulary.result import Conclusion, CurvePoint, Sensitivity
+
+Json = dict[str, Any]
+
+
+def summary(folder: Path, run_text: str = "last") -> Json:
+    """InputError when there is no such run. Every number in it was stored; nothing is computed anew."""
+    with open_reader(folder) as reader:
+        run_id = runs.find_run(reader, run_text)
+        header = runs.header(reader, run_id)
+        plan = provenance.plan(reader, run_id)
+        conclusion = curve.conclusion(reader, run_id)
+        return {
+            "run_id": run_id,
+            "logbook": str(folder / "logbook.db"),
+            "state": header.state,
+            "reason": header.reason,
+            "simulated": header.simulated,
+            "sequence": plan.name,
+            "modulation": plan.signal.modulation if plan.signal else None,
+            "seed": plan.seed,
+            "started_utc": header.started_utc,
+            "ended_utc": header.ended_utc,
+            **_measurand(plan),
+            **_results(conclusion),
+            "safe_state": _safe_state(runs.safe_state(reader, run_id)),
+        }
+
+
+def _measurand(plan: Plan) -> Json:
+    if plan.measurand is None:
+        return {"threshold": None, "reference_plane": None, "power_convention": None}
+    return {
+        "threshold": {"name": plan.measurand.threshold_name, "ber": plan.measurand.threshold_ber},
+        "reference_plane": plan.measurand.reference_plane,
+        "power_convention": plan.measurand.power,
+    }
+
+
+def _results(conclusion: Conclusion | None) -> Json:
+    if conclusion is None:
+        return {
+            "points": [],
+            "sensitivity": None,
+            "sensitivities": [],
+            "penalty_db": None,
+            "penalty_reference": None,
+            "penalties": [],
+            "findings": [],
+            "words": "The run has no conclusion yet.",
+        }
+    sensitivities = [_sensitivity(found) for found in conclusion.sensitivities]
+    penalties = [asdict(penalty) for penalty in conclusion.penalties]
+    return {
+        "points": [_point(point) for point in conclusion.points],
+        "sensitivity": sensitivities[0] if sensitivities else None,
+        "sensitivities": sensitivities,
+        "penalty_db": penalties[0]["penalty_db"] if penalties else None,
+        "penalty_reference": penalties[0]["reference"] if penalties else None,
+        "penalties": penalties,
+        "findings": [asdict(check) for check in conclusion.checks],
+        "budget": [asdict(line) for line in conclusion.budget],
+        "words": conclusion.words,
+    }
+
+
+def _point(point: CurvePoint) -> Json:
+    found = asdict(point)
+    found["findings"] = list(point.findings)
+    return found
+
+
+def _sensitivity(found: Sensitivity) -> Json:
+    return {**asdict(found), "curve_a_w": list(found.curve_a_w)}
+
+
+def _safe_state(stored: Any) -> Json | None:
+    if stored is None:
+        return None
+    return {"confirmed": stored.confirmed, "steps": [asdict(step) for step in stored.steps]}

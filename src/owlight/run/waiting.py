@@ -1,0 +1,58 @@
+"""Demodulation beside the measurement: one worker process, at most one stay waiting for it."""
+
+from __future__ import annotations
+
+import multiprocessing
+from collections.abc import Callable
+from concurrent.futures import Future, ProcessPoolExecutor
+from concurrent.futures import TimeoutError as NotYet
+from concurrent.futures.process import BrokenProcessPool
+from typing import Protocol
+
+from owlight.demodulation import worker
+from owlight.errors import BenchError
+from owlight.run.attended import SLICE_S
+from owlight.vocabulary.captures import Capture, Demodulation
+from owlight.vocabulary.plan import ChainText
+
+
+class Waiting(Protocol):
+    """A demodulation that was asked for; `result` waits for it."""
+
+    def result(self) -> Demodulation: ...
+
+
+class Demodulator:
+    """One spawned process that demodulates captures in the order they were handed in."""
+
+    def __init__(self, chain: ChainText, beat: Callable[[], None]) -> None:
+        self._chain = chain
+        self._beat = beat
+        self._pool = ProcessPoolExecutor(
+            max_workers=1, mp_context=multiprocessing.get_context("spawn"), initializer=worker.initialise
+        )
+        self._pool.submit(worker.warm)  # starts the process and its kernels while the bench warms up
+
+    def later(self, capture: Capture) -> Waiting:
+        return _Asked(self._pool.submit(worker.demodulate_text, capture, self._chain.text), self._beat)
+
+    def close(self, at_once: bool = False) -> None:
+        self._pool.shutdown(wait=not at_once, cancel_futures=at_once)
+
+
+class _Asked:
+    def __init__(self, future: Future[Demodulation], beat: Callable[[], None]) -> None:
+        self._future = future
+        self._beat = beat
+
+    def result(self) -> Demodulation:
+        while True:
+            try:
+                return self._future.result(timeout=SLICE_S)
+            except NotYet:
+                self._beat()
+            except BrokenProcessPool as trouble:
+                raise BenchError(
+                    "The demodulation process ended unexpectedly; captures already taken are kept. "
+                    "Look at free memory, then measure the missing points again."
+                ) from trouble
