@@ -6,10 +6,11 @@ import math
 from collections.abc import Iterator
 
 from owlight.errors import Problem
-from owlight.reader import Document
+from owlight.reader import Document, nearest
 from owlight.reader.lines import Path
 from owlight.sequence.file import SequenceFile
 from owlight.sequence.model import Sequence
+from owlight.theory.ber import MODULATIONS
 from owlight.vocabulary.terms import LO_POWER, RECEIVED_POWER
 from owlight.vocabulary.values import Term
 
@@ -84,7 +85,7 @@ def _light(document: Document[SequenceFile], sequence: Sequence) -> Found:
         yield ("settings",), f"lacks {SIGNAL_POWER}: without it no attenuation can be found for a received power"
     if sequence.capture and not places.keys() & {LO_POWER, Term("local_oscillator", "power")}:
         yield ("settings",), "lacks lo_power: a coherent receiver without local oscillator shows nothing"
-    if sequence.measurand and RECEIVED_POWER not in [axis.term for axis in sequence.axes]:
+    if sequence.measurand and str(RECEIVED_POWER) not in _swept(document):
         yield ("sweep",), "has no received_power, so there is no curve to read a sensitivity from"
 
 
@@ -95,6 +96,9 @@ def _signal(document: Document[SequenceFile], sequence: Sequence) -> Found:
     offsets = signal.pattern.tributary_offsets
     if offsets != "spread" and len(offsets) != 2 * signal.polarisations:
         yield ("signal", "pattern", "tributary_offsets"), f"needs {2 * signal.polarisations} offsets, one a lane"
+    if signal.modulation not in MODULATIONS:
+        hint = nearest(signal.modulation, MODULATIONS) or ";"
+        yield ("signal", "modulation"), f"{signal.modulation!r} is not known{hint} Allowed: {', '.join(MODULATIONS)}"
     both = signal.polarisations == 2
     if sequence.measurand and ("both" in sequence.measurand.power) != both:
         yield ("measurand", "power"), f"does not fit polarisations = {signal.polarisations}"
@@ -110,9 +114,14 @@ def _signal(document: Document[SequenceFile], sequence: Sequence) -> Found:
 def _reference(document: Document[SequenceFile], sequence: Sequence) -> Found:
     if sequence.reference is None:
         return
-    named = {setting.term for setting in sequence.reference.settings}
-    swept = {axis.term for axis in sequence.axes}
-    for term in sorted(swept - named):
-        yield ("reference",), f"lacks {term}: the reference point needs a value for every sweep"
-    for term in sorted(named - swept):
-        yield ("reference", str(term)), f"{term} is not swept, so nothing would set it back"
+    named = document.value.reference.keys() - {"every"} if document.value else set()
+    swept = _swept(document)
+    for name in sorted(swept - named):
+        yield ("reference",), f"lacks {name}: the reference point needs a value for every sweep"
+    for name in sorted(named - swept):
+        yield ("reference", name), f"{name} is not swept, so nothing would set it back"
+
+
+def _swept(document: Document[SequenceFile]) -> set[str]:
+    """By their names in the file: a sweep whose values are wrong is still a sweep."""
+    return {sweep.setting for sweep in document.value.sweep} if document.value else set()

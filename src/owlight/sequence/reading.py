@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from owlight.errors import Problem
-from owlight.reader import Document, read
+from owlight.reader import Document, nearest, read
 from owlight.reader.lines import Path
 from owlight.sequence.agreement import disagreements
 from owlight.sequence.file import MeasurandTable, SequenceFile, SweepTable
 from owlight.sequence.model import Axis, Demodulation, Reference, Sequence
 from owlight.sequence.values import drift_unit, number_in, stepped, term_named, value_for
+from owlight.theory.thresholds import THRESHOLDS
 from owlight.vocabulary.plan import Condition, Measurand
 from owlight.vocabulary.terms import TERMS
 from owlight.vocabulary.values import Setting, Term, Value
@@ -81,11 +82,16 @@ class _Resolving:
         return tuple(found)
 
     def _measurand(self, table: MeasurandTable) -> Measurand | None:
-        ber = table.threshold.ber
-        if ber is None:
-            self._wrong(("measurand", "threshold", "ber"), "is missing; give the threshold's bit error ratio")
+        name, ber = table.threshold.name_, table.threshold.ber
+        known = THRESHOLDS.get(name)
+        if ber is None and known is None:
+            hint = f"unknown threshold{nearest(name, THRESHOLDS) or ';'} Known: {', '.join(THRESHOLDS)}"
+            self._wrong(("measurand", "threshold", "name"), f"{hint}; another name needs its ber beside it")
             return None
-        return Measurand(table.reference_plane, table.power, table.threshold.name_, ber)
+        if ber is not None and known is not None and ber != known.ber:
+            words = f"is {ber:g}, but {known.ber:g} belongs to this name; leave it out or give it another name"
+            self._wrong(("measurand", "threshold", "ber"), words)
+        return Measurand(table.reference_plane, table.power, name, known.ber if known else ber or 0.0)
 
     def _conditions(self, file: SequenceFile) -> tuple[Condition, ...]:
         found = []
