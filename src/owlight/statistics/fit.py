@@ -198,7 +198,8 @@ def _move_tau(task: Task, state: _State, here: Pooled) -> Floats:
 
 
 def _held_at_zero(task: Task, state: _State) -> Floats:
-    return np.asarray(sum((state.parameters[:, w] <= 0.0).astype(float) for w in _BOUNDED if w in task.free) + 0.0)
+    bounded = [which for which in _BOUNDED if which in task.free]
+    return np.asarray((state.parameters[:, bounded] <= 0.0).sum(axis=1), dtype=np.float64)
 
 
 def _move_imbalance(task: Task, state: _State) -> Floats:
