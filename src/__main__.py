@@ -1,0 +1,26 @@
+"""python3 src ARGS: sets up an environment of its own from the hashed lock, then runs owlight in it."""
+import os
+import sys
+
+HERE = os.path.dirname(os.path.abspath(__file__))
+sys.path[0] = os.path.join(HERE, "owlight")  # only the bootstrap; the rest waits for its environment
+
+import _bootstrap  # noqa: E402
+
+del sys.path[0]  # the rooms there carry names of standard modules
+
+WORDS = """python3 src demo                            measure on the simulated bench
+python3 src forecast SEQUENCE --bench B     what would be done, without touching an instrument
+python3 src run SEQUENCE --bench B          measure
+python3 src report last                     one page to print or send
+python3 tests                               run the tests"""
+
+if __name__ == "__main__":
+    if len(sys.argv) == 1:
+        print(WORDS)
+        sys.exit(0)
+    root = os.path.dirname(HERE)
+    python = _bootstrap.ready_python(root, os.path.join(root, "requirements.lock"))
+    # so that the commands the program shows can be pasted as they are
+    os.environ.setdefault("OWLIGHT_STARTED_AS", _bootstrap.started_as(sys.argv[0]))
+    sys.exit(_bootstrap.become([python, "-m", "owlight"] + sys.argv[1:]))

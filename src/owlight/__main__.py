@@ -1,0 +1,5 @@
+"""python -m owlight"""
+
+from owlight.cli import main
+
+main()

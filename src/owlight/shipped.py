@@ -1,0 +1,55 @@
+"""Where shipped data and the user's caches lie: a TOML by path, then the lab's folder, then what came with the program."""
+
+from __future__ import annotations
+
+import difflib
+import os
+import sys
+from pathlib import Path
+
+from owlight.errors import InputError
+
+KINDS = ("drivers", "sequences", "simulated_instruments")
+_CHECKOUT = Path(__file__).resolve().parents[2]
+_PACKED = Path(__file__).resolve().parent / "shipped"
+
+
+def _shipped(kind: str) -> Path:
+    """In a checkout the top-level folder, in an installed wheel the packed one."""
+    return _PACKED / kind if (_PACKED / kind).is_dir() else _CHECKOUT / kind
+
+
+def names(kind: str) -> tuple[str, ...]:
+    """The shipped names of a kind, without `.toml`."""
+    return tuple(sorted(path.stem for path in _shipped(kind).glob("*.toml")))
+
+
+def find(kind: str, name: str, near: Path | None = None) -> Path:
+    """The file called `name` (with or without `.toml`, or a path), as seen from the file `near` that names it."""
+    base = near.parent if near is not None else Path.cwd()
+    spelled = (name, f"{name}.toml") if not name.endswith(".toml") else (name,)
+    places = (base, Path.cwd(), base / kind, base.parent / kind, _shipped(kind))
+    for place in places:
+        for file in spelled:
+            if (place / file).is_file():
+                return (place / file).resolve()
+    close = difflib.get_close_matches(Path(name).stem, names(kind), n=1)
+    hint = f" Did you mean {close[0]}?" if close else ""
+    known = ", ".join(names(kind)) or "none"
+    raise InputError(f"There is no file {name!r} among {kind}: neither as a path, nor shipped ({known}).{hint}")
+
+
+def user_cache() -> Path:
+    """The user's own cache folder for this program; made by whoever writes to it."""
+    if sys.platform == "win32":
+        base = Path(os.environ.get("LOCALAPPDATA") or Path.home() / "AppData" / "Local")
+    elif sys.platform == "darwin":
+        base = Path.home() / "Library" / "Caches"
+    else:
+        base = Path(os.environ.get("XDG_CACHE_HOME") or Path.home() / ".cache")
+    return base / "owlight"
+
+
+def numba_cache() -> None:
+    """Point the kernel cache at the user's own folder; never a shared one, since what lies there is executed."""
+    os.environ.setdefault("NUMBA_CACHE_DIR", str(user_cache() / "numba"))
