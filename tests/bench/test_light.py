@@ -97,7 +97,7 @@ def test_refusal_names_plane_limit_power_and_point(plane: str, highest_dbm: floa
         refuse_if_over(strict, SET, point=7)
     words = str(caught.value)
     computed = f"{powers(SET)[plane]:.2f} dBm"
-    assert all(part in words for part in (plane, computed, f"{highest_dbm:.2f} dBm", "point 7"))
+    assert all(part in words for part in (plane, computed, f"{highest_dbm:.2f} dBm", "Point 7"))
 
 
 def test_limit_itself_is_allowed() -> None:

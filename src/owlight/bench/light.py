@@ -94,16 +94,24 @@ def _source_words(name: str, on: bool | None, power_dbm: float | None) -> str:
 
 
 def refuse_if_over(bench: Bench, state: LightState, point: int | None = None) -> None:
-    """SafetyRefusal that names plane, limit, computed power and point; nothing lifts it but another bench file."""
-    for power in worst_case(bench, state, point):
-        # a limit is met when it is reached exactly; the picodecibel is rounding
-        if power.power_dbm > power.limit_dbm + 1e-12:
-            where = "" if point is None else f" at point {point}"
-            raise SafetyRefusal(
-                f"The {power.plane} could see {power.power_dbm:.2f} dBm{where}, above its limit of "
-                f"{power.limit_dbm:.2f} dBm ({power.situation}; sources at their upper tolerance, least loss). "
-                "Nothing was set. Ask for less power, or add loss and say so in the bench file."
-            )
+    """SafetyRefusal that names planes, limits, computed powers and point; only another bench file lifts it."""
+    over = [power for power in worst_case(bench, state, point) if _is_over(power)]
+    if not over:
+        return
+    planes = "; ".join(
+        f"the {power.plane} could see {power.power_dbm:.2f} dBm, above its limit of {power.limit_dbm:.2f} dBm"
+        for power in over
+    )
+    where = "" if point is None else f"Point {point}: "
+    raise SafetyRefusal(
+        f"{where}{planes} ({over[0].situation}; sources at their upper tolerance, least loss). "
+        "Nothing was set. Ask for less power, or add loss and say so in the bench file."
+    )
+
+
+def _is_over(power: PlanePower) -> bool:
+    # a limit that is just reached is kept; the margin is rounding
+    return power.power_dbm > power.limit_dbm + 1e-9
 
 
 def fixed_pad_words(bench: Bench, state: LightState) -> str:
@@ -119,7 +127,7 @@ def fixed_pad_words(bench: Bench, state: LightState) -> str:
 
 
 def _over(bench: Bench, state: LightState) -> list[str]:
-    return [power.plane for power in worst_case(bench, state) if power.power_dbm > power.limit_dbm]
+    return [power.plane for power in worst_case(bench, state) if _is_over(power)]
 
 
 def attenuation_for(bench: Bench, received_power_dbm: float, signal_power_dbm: float) -> float:

@@ -1,0 +1,118 @@
+"""Whether a sequence fits a bench: roles, ranges, reach, calibration."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+
+from owlight.bench import Bench, attenuation_for, lo_laser_power_dbm, lowest_received_power_dbm
+from owlight.driver import Driver
+from owlight.errors import Problem
+from owlight.plan.limits import LO_LASER_POWER, SIGNAL_POWER
+from owlight.quantity import words
+from owlight.sequence import Sequence
+from owlight.vocabulary.plan import Point
+from owlight.vocabulary.terms import LO_POWER, RECEIVED_POWER, TERMS
+from owlight.vocabulary.values import Setting, Term
+
+_WAVELENGTH = Term("signal_laser", "wavelength")
+_BEHIND = {
+    RECEIVED_POWER: ("signal_laser", "attenuator", "power_meter"),
+    LO_POWER: ("local_oscillator",),
+}
+Found = Iterator[tuple[str, str]]
+
+
+def misfits(
+    bench: Bench,
+    drivers: Mapping[str, Driver],
+    sequence: Sequence,
+    settings: tuple[Setting, ...],
+    points: tuple[Point, ...],
+) -> tuple[Problem, ...]:
+    """Each as a problem of the sequence; a term is named once however many points ask for it."""
+    asked = _asked(bench, sequence, settings, points)
+    found = [
+        *_roles(bench, sequence, settings),
+        *_ranges(drivers, asked),
+        *_reach(bench, sequence, points),
+        *_planes(bench, sequence),
+        *_calibration(bench, asked),
+    ]
+    return tuple(Problem(sequence.name, None, key, said) for key, said in dict.fromkeys(found))
+
+
+def _asked(
+    bench: Bench, sequence: Sequence, settings: tuple[Setting, ...], points: tuple[Point, ...]
+) -> tuple[Setting, ...]:
+    """Every setting that an instrument would get, those behind a quantity of the bench included."""
+    at = (setting for condition in sequence.conditions for setting in condition.at)
+    plain = dict.fromkeys((*settings, *at, *(setting for point in points for setting in point.settings)))
+    behind = [
+        Setting(LO_LASER_POWER, lo_laser_power_dbm(bench, float(each.value))) for each in plain if each.term == LO_POWER
+    ]
+    return (*(each for each in plain if each.term.role != "bench"), *behind)
+
+
+def _roles(bench: Bench, sequence: Sequence, settings: tuple[Setting, ...]) -> Found:
+    terms = [each.term for each in settings]
+    terms += [axis.term for axis in sequence.axes] + list(sequence.readings)
+    for condition in sequence.conditions:
+        terms += [condition.reading, *(each.term for each in condition.at)]
+    needed = [(str(term), role) for term in terms for role in _BEHIND.get(term, (term.role,))]
+    if sequence.capture is not None:
+        needed += [("capture", "oscilloscope")]
+    for key, role in needed:
+        if role not in bench.role:
+            yield key, f"needs the role {role}, which the bench does not have"
+
+
+def _ranges(drivers: Mapping[str, Driver], asked: tuple[Setting, ...]) -> Found:
+    for setting in asked:
+        driver = drivers.get(setting.term.role)
+        if driver is None:
+            continue
+        if not driver.knows(setting.term):
+            yield str(setting.term), f"is not in the driver {driver.driver}"
+            continue
+        limits = driver.range_of(setting.term)
+        if limits is None or isinstance(setting.value, str | bool):
+            continue
+        unit = TERMS[setting.term].unit
+        low, high = limits
+        if not low <= setting.value <= high:
+            span = f"{words(low, unit)} to {words(high, unit)}"
+            yield str(setting.term), f"{words(setting.value, unit)} is outside the instrument's range, {span}"
+
+
+def _reach(bench: Bench, sequence: Sequence, points: tuple[Point, ...]) -> Found:
+    fixed = {setting.term: setting.value for setting in sequence.settings}
+    lowest_dbm = lowest_received_power_dbm(bench)
+    maximum_db = bench.light_path.attenuator_maximum_db
+    for point in points:
+        received, signal = point.value(RECEIVED_POWER), point.value(SIGNAL_POWER) or fixed.get(SIGNAL_POWER)
+        if received is None or signal is None:
+            continue
+        attenuation_db = attenuation_for(bench, float(received), float(signal))
+        asked = f"point {point.index} asks for {words(float(received), 'dBm')}, which"
+        if not 0.0 <= attenuation_db <= maximum_db:
+            high_dbm = float(received) + attenuation_db
+            span = f"{high_dbm - maximum_db:.2f} to {high_dbm:.2f} dBm"
+            yield str(RECEIVED_POWER), f"{asked} the attenuator cannot give; it reaches {span}"
+        if lowest_dbm is not None and float(received) < lowest_dbm:
+            yield str(RECEIVED_POWER), f"{asked} the tap cannot measure: below ten times the meter's floor"
+
+
+def _planes(bench: Bench, sequence: Sequence) -> Found:
+    plane = bench.receiver.reference_plane
+    if sequence.measurand is not None and sequence.measurand.reference_plane != plane:
+        yield "measurand.reference_plane", f'is not the plane that the bench is calibrated for: "{plane}"'
+    if sequence.signal is not None and sequence.signal.polarisations > bench.receiver.polarisations:
+        yield "signal.polarisations", f"the receiver has lanes for {bench.receiver.polarisations}"
+
+
+def _calibration(bench: Bench, asked: tuple[Setting, ...]) -> Found:
+    record = bench.plane_minus_tap
+    for setting in asked:
+        if setting.term == _WAVELENGTH and abs(float(setting.value) - record.wavelength_nm) > record.wavelength_span_nm:
+            span = f"{words(record.wavelength_nm, 'nm')} within {words(record.wavelength_span_nm, 'nm')}"
+            yield str(_WAVELENGTH), f"{words(float(setting.value), 'nm')} is outside the calibration, {span}"

@@ -1,0 +1,37 @@
+"""The way to the safe state as messages: executable without any file, by the run, by `safe` and by the guard."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+from owlight.bench import Bench, safe_settings
+from owlight.driver import Driver, program_message, query
+from owlight.quantity import words
+from owlight.vocabulary.plan import SafeStep
+from owlight.vocabulary.terms import TERMS
+from owlight.vocabulary.values import Setting
+
+
+def safe_steps(bench: Bench, drivers: Mapping[str, Driver], resources: Mapping[str, str]) -> tuple[SafeStep, ...]:
+    """In the bench's safe order; no step waits for another's success."""
+    return tuple(_step(bench, drivers[role], resources[role], setting) for role, setting in safe_settings(bench))
+
+
+def _step(bench: Bench, driver: Driver, resource: str, setting: Setting) -> SafeStep:
+    term = setting.term
+    return SafeStep(
+        role=term.role,
+        resource=resource,
+        serial_number=bench.role[term.role].serial_number,
+        command=program_message(driver, term, setting.value),
+        query=query(driver, term),
+        expected=setting.value,
+        tolerance=driver.tolerance_of(term),
+        words=_words(setting),
+    )
+
+
+def _words(setting: Setting) -> str:
+    if isinstance(setting.value, bool):
+        return f"{setting.term} {'on' if setting.value else 'off'}"
+    return f"{setting.term} to {words(float(setting.value), TERMS[setting.term].unit)}"

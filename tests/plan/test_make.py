@@ -1,0 +1,141 @@
+"""Limits, fit and figures of a plan."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+import pytest
+
+from owlight.bench.model import LO_INPUT, METER, PHOTODIODE, SIGNAL_INPUT
+from owlight.errors import InputError, SafetyRefusal
+from owlight.plan import forecast
+from owlight.vocabulary.plan import Plan
+from owlight.vocabulary.terms import LO_POWER
+from owlight.vocabulary.values import Setting, Term
+
+PlanOf = Callable[..., Plan]
+TO = 'to = "-36 dBm"'
+
+
+def test_shipped_sequences_fit_the_demo_bench(plan_of: PlanOf) -> None:
+    for name in ("qpsk_sensitivity", "lo_power_map", "power_log"):
+        assert plan_of(name).points
+
+
+def test_point_over_limit_is_refused_by_name(plan_of: PlanOf) -> None:
+    with pytest.raises(SafetyRefusal) as caught:
+        plan_of("qpsk_sensitivity", {TO: 'to = "6 dBm"'})
+    # 46 dB in steps of 0.5 dB: the last is point 92. On the 6 dBm come 0.5 dB tolerance of the laser, 2 dB less loss
+    # of the transmitter, 0.5 dB less insertion loss, 0.5 dB less loss after the tap; no attenuation is left to be wrong
+    words = str(caught.value)
+    assert "Point 92" in words
+    assert "the receiver signal input could see 9.50 dBm, above its limit of 3.00 dBm" in words
+
+
+def test_lo_over_limit_is_refused(plan_of: PlanOf) -> None:
+    with pytest.raises(SafetyRefusal, match=r"the receiver LO input could see 18\.80 dBm, above its limit of 17\.00"):
+        plan_of("qpsk_sensitivity", {'lo_power = "12 dBm"': 'lo_power = "18 dBm"'})
+
+
+def test_condition_is_judged_like_a_point(plan_of: PlanOf) -> None:
+    with pytest.raises(SafetyRefusal, match="receiver signal input"):
+        plan_of("qpsk_sensitivity", {'at = { received_power = "-36 dBm" }': 'at = { received_power = "2 dBm" }'})
+
+
+@pytest.mark.parametrize(
+    ("changes", "bench", "words"),
+    [
+        ({TO: 'to = "-13 dBm"'}, {}, "the attenuator cannot give; it reaches -73.60 to -13.60 dBm"),
+        ({}, {'floor = "-75 dBm"': 'floor = "-40 dBm"'}, "point 0 asks for -40 dBm, which the tap cannot measure"),
+        ({'"signal_laser.wavelength" = "1550.12 nm"': '"signal_laser.wavelength" = "1560 nm"'}, {},
+         "1560 nm is outside the calibration, 1550.12 nm within 5 nm"),
+        ({'reference_plane = "receiver signal input"': 'reference_plane = "tap input"'}, {}, "not the plane that"),
+    ],
+)  # fmt: skip
+def test_misfit_is_an_input_error(plan_of: PlanOf, changes: dict[str, str], bench: dict[str, str], words: str) -> None:
+    with pytest.raises(InputError) as caught:
+        plan_of("qpsk_sensitivity", changes, bench)
+    assert words in str(caught.value)
+
+
+def test_highest_powers_show_open_attenuator(plan_of: PlanOf) -> None:
+    powers = plan_of("qpsk_sensitivity").highest_power
+    assert [power.plane for power in powers] == [SIGNAL_INPUT, METER, LO_INPUT, PHOTODIODE] * 2
+    planned, opened = powers[:4], powers[4:]
+    assert {power.point for power in planned if power.plane != LO_INPUT} <= {None, 8}
+    assert planned[0].power_dbm == pytest.approx(-36 + 0.5 + 2 + 0.5 + 0.5 + 0.3)
+    # 10 + 0.5 - 10 - 1 - 9.6
+    assert opened[0].power_dbm == pytest.approx(-10.1)
+    assert all(power.power_dbm <= power.limit_dbm for power in powers)
+
+
+OPEN = {'highest = "3 dBm"': 'highest = "-20 dBm"'}
+ALONE = {"[stop]": '[unattended]\nat_most = "10 h"\n[stop]'}
+
+
+def test_unattended_run_wants_the_pad(plan_of: PlanOf) -> None:
+    assert "fit a fixed pad of at least 10 dB" in plan_of("qpsk_sensitivity", {}, OPEN).highest_power[4].situation
+    with pytest.raises(SafetyRefusal, match="fit a fixed pad of at least 10 dB"):
+        plan_of("qpsk_sensitivity", ALONE, OPEN)
+    accepted = {'at_most = "14 h"': 'at_most = "14 h"\naccepts_open_attenuator = "the head of the laboratory"'}
+    assert plan_of("qpsk_sensitivity", ALONE, OPEN | accepted).points
+    assert plan_of("qpsk_sensitivity", ALONE).points
+
+
+def test_unattended_run_wants_permission_and_time(plan_of: PlanOf) -> None:
+    with pytest.raises(SafetyRefusal, match=r"may be left alone for 0\.1 h only"):
+        plan_of("qpsk_sensitivity", {"[stop]": '[unattended]\nat_most = "6 min"\n[stop]'})
+    gone = '[unattended]\nauthorised_by = "nobody: this bench is simulated"\n'
+    gone += 'contact = "nobody: this bench is simulated"\nat_most = "14 h"'
+    with pytest.raises(SafetyRefusal, match=r"has no \[unattended\]"):
+        plan_of("qpsk_sensitivity", ALONE, {gone: ""})
+
+
+def test_record_holds_the_symbols_asked(plan_of: PlanOf) -> None:
+    capture = plan_of("qpsk_sensitivity").capture
+    assert capture is not None
+    # 80 GS/s at 32 GBd is 2.5 samples a symbol
+    assert 250_000 < capture.record_length < 257_000 and capture.record_length % 256 == 0
+    assert capture.lanes == ("XI", "XQ", "YI", "YQ")
+
+
+def test_settings_end_with_light(plan_of: PlanOf) -> None:
+    settings = plan_of("power_log").settings
+    assert settings[-1] == Setting(Term("signal_laser", "output"), True)
+    terms = [setting.term for setting in plan_of("qpsk_sensitivity").settings]
+    assert terms.index(Term("pattern_source", "output")) < terms.index(Term("signal_laser", "wavelength"))
+    assert terms[-1] == LO_POWER
+
+
+def test_offsets_are_settled_in_plan(plan_of: PlanOf) -> None:
+    plan = plan_of("qpsk_sensitivity")
+    assert plan.signal is not None
+    assert len(set(plan.signal.tributary_offsets)) == 4
+    assert Setting(Term("pattern_source", "offset_4"), plan.signal.tributary_offsets[3]) in plan.settings
+
+
+def test_safe_steps_begin_with_attenuator(plan_of: PlanOf) -> None:
+    steps = plan_of("qpsk_sensitivity").safe_state
+    assert [step.role for step in steps] == ["attenuator", "signal_laser", "local_oscillator"]
+    assert all(step.command and step.query.endswith("?") and step.serial_number for step in steps)
+    assert steps[0].words == "attenuator.attenuation to 60 dB" and steps[1].words == "signal_laser.output off"
+
+
+def test_forecast_lists_every_stay_in_order(plan_of: PlanOf) -> None:
+    plan = plan_of("lo_power_map")
+    told = forecast(plan)
+    assert [stay.point for stay in told.stays] == [index for indices in plan.order for index in indices]
+    assert told.stays[0].settings[0] == ("lo_power", "6 dBm")
+    assert len(told.stays) == 2 * 3 * 5 and told.seconds == plan.forecast_s > 30 * plan.stay_s
+
+
+def test_disk_follows_what_is_kept(plan_of: PlanOf) -> None:
+    def filled(keep: str) -> int:
+        return plan_of("qpsk_sensitivity", {'keep = "all"': f'keep = "{keep}"'}).forecast_bytes
+
+    plan = plan_of("qpsk_sensitivity")
+    assert plan.capture is not None
+    one = 4 * plan.capture.record_length
+    # 27 stays and 4 visits of the reference; 9 points and the reference
+    assert filled("all") - filled("none") == 31 * one == filled("doubtful") - filled("none")
+    assert filled("one per point") - filled("none") == 10 * one
