@@ -17,7 +17,7 @@ def test_demo_bench_has_every_role() -> None:
     assert document.problems == ()
     assert document.value is not None
     assert document.value.role.keys() == ROLES.keys()
-    assert [lane.name_ for lane in document.value.receiver.lane] == ["XI", "XQ", "YI", "YQ"]
+    assert [lane.name for lane in document.value.receiver.lane] == ["XI", "XQ", "YI", "YQ"]
 
 
 @pytest.mark.parametrize(

@@ -80,7 +80,7 @@ class Meter:
 
 @dataclass(frozen=True)
 class Lane:
-    name_: Literal["XI", "XQ", "YI", "YQ"]
+    name: Literal["XI", "XQ", "YI", "YQ"]
     channel: Annotated[int, Within(1, 4)]
     skew_s: Annotated[float, Within(-1e-6, 1e-6)] = 0.0
     inverted: bool = False

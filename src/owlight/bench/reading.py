@@ -95,7 +95,7 @@ def _receiver(bench: Bench) -> Found:
         yield ("receiver",), "needs exactly one of port_responsivity and diode_responsivity: they differ by the hybrid"
     if receiver.reference_plane != SIGNAL_INPUT:
         yield ("receiver", "reference_plane"), f'is not the plane that plane_minus_tap leads to: "{SIGNAL_INPUT}"'
-    if tuple(lane.name_ for lane in receiver.lane) not in _LANES:
+    if tuple(lane.name for lane in receiver.lane) not in _LANES:
         yield ("receiver", "lane"), "must be XI, XQ, YI, YQ in this order, or XI, XQ for one polarisation"
     channels = [lane.channel for lane in receiver.lane]
     for place, channel in enumerate(channels):

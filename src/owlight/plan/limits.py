@@ -94,6 +94,13 @@ def _keep_highest(highest: dict[str, PlanePower], powers: Iterable[PlanePower]) 
             highest[power.plane] = power
 
 
+def longest_unattended_s(bench: Bench, sequence: Sequence) -> float | None:
+    """How long the run may be left alone; None for a run that somebody watches."""
+    if sequence.unattended is None or bench.unattended is None:
+        return None
+    return min(bench.unattended.at_most_s, sequence.unattended.at_most_s)
+
+
 def refuse_unattended(bench: Bench, sequence: Sequence, powers: tuple[PlanePower, ...], forecast_s: float) -> None:
     """A run that nobody watches needs the bench's permission, its time, and a path that bears a reset attenuator."""
     if sequence.unattended is None:
@@ -104,8 +111,8 @@ def refuse_unattended(bench: Bench, sequence: Sequence, powers: tuple[PlanePower
             "The sequence is meant to run unattended, but the bench has no [unattended]. Nothing was opened. "
             "Let the person responsible add who authorises it, whom to call and how long it may last."
         )
-    longest_s = min(allowed.at_most_s, sequence.unattended.at_most_s)
-    if forecast_s > longest_s:
+    longest_s = longest_unattended_s(bench, sequence)
+    if longest_s is not None and forecast_s > longest_s:
         raise SafetyRefusal(
             f"The run is forecast to take {forecast_s / 3600:.1f} h, but it may be left alone for "
             f"{longest_s / 3600:.1f} h only. Nothing was opened. Ask for fewer points or passes."

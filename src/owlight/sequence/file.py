@@ -12,7 +12,7 @@ Order = Literal["as listed", "ascending", "descending", "up-down", "shuffled", "
 
 @dataclass(frozen=True)
 class ThresholdTable:
-    name_: str
+    name: str
     ber: Annotated[float | None, Within(1e-15, 0.4)] = None
 
 

@@ -82,7 +82,7 @@ class _Resolving:
         return tuple(found)
 
     def _measurand(self, table: MeasurandTable) -> Measurand | None:
-        name, ber = table.threshold.name_, table.threshold.ber
+        name, ber = table.threshold.name, table.threshold.ber
         known = THRESHOLDS.get(name)
         if ber is None and known is None:
             hint = f"unknown threshold{nearest(name, THRESHOLDS) or ';'} Known: {', '.join(THRESHOLDS)}"
