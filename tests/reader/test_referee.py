@@ -60,8 +60,12 @@ class Referee(Strict):
 
 
 VALUES = st.sampled_from(
-    ['"x"', '"-3 dBm"', '"2 mW"', '"3 dB"', '"3"', "3", "0.5", "1.5", "true", "[1, 2]", "[1, true]", "[]", "nan"]
-    + ['{ shape = "root raised cosine" }', "{ shape = 1 }", '{ shape = "root raised cosine", rolloff = 2 }', "{}"]
+    """
+    "x" | "-3 dBm" | "2 mW" | "3 dB" | "3" | 3 | 0.5 | 1.5 | true | [1, 2] | [1, true] | [] | nan | {}
+    { shape = "root raised cosine" } | { shape = 1 } | { shape = "root raised cosine", rolloff = 2 }
+    """.strip()
+    .replace("\n", "|")
+    .split("|")
 )
 GOOD = {"name": '"x"', "power": '"-3 dBm"', "loss": '"3 dB"', "symbols": "3", "on": "true", "counts": "[1, 2]"}
 GOOD["pulse"] = '{ shape = "root raised cosine", rolloff = 0.5 }'

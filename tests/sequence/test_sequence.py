@@ -54,9 +54,24 @@ def spoilt(old: str, new: str) -> list[tuple[str, str]]:
 @pytest.mark.parametrize(
     ("old", "new", "key", "words"),
     [
-        ('setting = "received_power"', 'setting = "recieved_power"', "sweep[1].setting", 'did you mean "received_power"?'),
-        ('"signal_laser.power" =', '"signal_lasr.power" =', 'settings."signal_lasr.power"', 'mean "signal_laser"? Roles:'),
-        ('"signal_laser.power" = "10 dBm"', '"signal_laser.power" = "10 dB"', 'settings."signal_laser.power"', "a ratio"),
+        (
+            'setting = "received_power"',
+            'setting = "recieved_power"',
+            "sweep[1].setting",
+            'did you mean "received_power"?',
+        ),
+        (
+            '"signal_laser.power" =',
+            '"signal_lasr.power" =',
+            'settings."signal_lasr.power"',
+            'mean "signal_laser"? Roles:',
+        ),
+        (
+            '"signal_laser.power" = "10 dBm"',
+            '"signal_laser.power" = "10 dB"',
+            'settings."signal_laser.power"',
+            "a ratio",
+        ),
         ('"signal_laser.power" = "10 dBm"', '"signal_laser.power" = 10', 'settings."signal_laser.power"', "in quotes"),
         ('step = "0.5 dB"', 'step = "0.5 dBm"', "sweep[1].step", "is a level (dBm or W), but a ratio (dB)"),
         ('step = "0.5 dB"', 'step = "0.7 dB"', "sweep[1].step", "not a whole number of steps"),
@@ -64,13 +79,27 @@ def spoilt(old: str, new: str) -> list[tuple[str, str]]:
         ('step = "0.5 dB"', 'step = "1e-9 dB"', "sweep[1].step", "at most 10000"),
         ('step = "0.5 dB"', "", "sweep[1]", "missing: step"),
         ('step = "0.5 dB"', 'values = ["1 dBm"]', "sweep[1].values", "give the one or the others"),
-        ('"power_meter.power", "rec', '"power_meter.zero", "rec', "record.readings[1]", "is something an instrument does"),
-        ('drifts_less_than = "0.02 dB"', 'drifts_less_than = "1 nW"', "before[1].wait_until.drifts_less_than", "a ratio"),
+        (
+            '"power_meter.power", "rec',
+            '"power_meter.zero", "rec',
+            "record.readings[1]",
+            "is something an instrument does",
+        ),
+        (
+            'drifts_less_than = "0.02 dB"',
+            'drifts_less_than = "1 nW"',
+            "before[1].wait_until.drifts_less_than",
+            "a ratio",
+        ),
         ('at_most = "60 min"', 'at_most = "4 min"', "before[1].wait_until.at_most", "shorter than `over`"),
         ("[measurand]", "[signal.x]", "capture", "needs [measurand]"),
         ("ber = 3.8e-3", "ber = 4e-3", "measurand.threshold.ber", "0.0038 belongs to this name"),
-        ('{ name = "7 % overhead hard-decision FEC", ber = 3.8e-3 }', '{ name = "7 % FEC" }', "measurand.threshold.name",
-         "another name needs its ber"),
+        (
+            '{ name = "7 % overhead hard-decision FEC", ber = 3.8e-3 }',
+            '{ name = "7 % FEC" }',
+            "measurand.threshold.name",
+            "another name needs its ber",
+        ),
         ("symbols = 100_000", "symbols = 10", "capture.symbols", "outside 1000"),
         ("symbols = 100_000", 'symbols = "many"', "capture.symbols", "not a whole number"),
         ('sample_rate = "80 GS/s"', 'sample_rate = "35 GS/s"', "capture.sample_rate", "would fold"),
@@ -80,17 +109,30 @@ def spoilt(old: str, new: str) -> list[tuple[str, str]]:
         ('"spread" }', "[1, 2] }", "signal.pattern.tributary_offsets", "needs 4 offsets"),
         ('lo_power = "12 dBm"', "", "settings", "lacks lo_power"),
         ('"signal_laser.power" = "10 dBm"', "", "settings", "lacks signal_laser.power"),
-        ('lo_power = "12 dBm"', 'lo_power = "12 dBm"\n"local_oscillator.power" = "9 dBm"',
-         'settings."local_oscillator.power"', "contradicts lo_power"),
-        ('lo_power = "12 dBm"', 'lo_power = "12 dBm"\nreceived_power = "-36 dBm"', "settings.received_power", "also swept"),
-        ('lo_power = "12 dBm"', 'lo_power = "12 dBm"\n"pattern_source.rolloff" = 0.2',
-         'settings."pattern_source.rolloff"', "[signal] decides this"),
+        (
+            'lo_power = "12 dBm"',
+            'lo_power = "12 dBm"\n"local_oscillator.power" = "9 dBm"',
+            'settings."local_oscillator.power"',
+            "contradicts lo_power",
+        ),
+        (
+            'lo_power = "12 dBm"',
+            'lo_power = "12 dBm"\nreceived_power = "-36 dBm"',
+            "settings.received_power",
+            "also swept",
+        ),
+        (
+            'lo_power = "12 dBm"',
+            'lo_power = "12 dBm"\n"pattern_source.rolloff" = 0.2',
+            'settings."pattern_source.rolloff"',
+            "[signal] decides this",
+        ),
         ("every = 9", "every = 0", "reference.every", "at least 1"),
         ('received_power = "-38 dBm"', "", "reference", "lacks received_power"),
         ('order = "shuffled passes"', 'order = "random"', "sweep[1].order", "shuffled passes"),
         ("passes = 3", "passes = 0", "stop.passes", "outside 1"),
     ],
-)  # fmt: skip
+)
 def test_mistake_is_named_with_what_is_allowed(old: str, new: str, key: str, words: str) -> None:
     found = spoilt(old, new)
     assert any(key == at and words in said for at, said in found), found

@@ -28,7 +28,7 @@ class LightState:
 
 
 def worst_case(bench: Bench, state: LightState, point: int | None = None) -> tuple[PlanePower, ...]:
-    """The highest power at each plane that light could reach: upper tolerance of the sources, least loss of the path."""
+    """The highest power at each plane light could reach: upper tolerance of the sources, least loss of the path."""
     powers_dbm = _powers_dbm(bench, state)
     return tuple(
         PlanePower(plane, _situation(state), power_dbm, bench.limit[plane].highest_dbm, point)
