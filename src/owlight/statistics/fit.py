@@ -18,8 +18,11 @@ import numpy as np
 from owlight.statistics.curve import BETA, C, LN_A, B, BerTable, Counts, Floats, Pooled, pooled
 
 _ROUNDS = 60
-_CLOSE = 1e-7
+_CLOSE = 1e-5
+"""Of log a, b and tau in dB: 4e-5 dB of power, far below any interval."""
 _BOUNDED = (B, C)
+_MOST_SHARE = 0.98
+"""Of 1/SNR at the middle of the powers that b may have; beyond it the curve is flat."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -126,20 +129,41 @@ def _information(task: Task, state: _State, here: Pooled, held: Floats) -> Float
 def _move_parameters(task: Task, state: _State, here: Pooled) -> Floats:
     _centre_shift(task, state, _pooled(task, state, state.shift))
     score, _ = _integrate(task, state)
-    held = np.ones((len(score), 4))
-    held[:, list(task.free)] = 0.0
+    held = _not_free(task, len(score))
+    step = _scoring_step(task, state, here, score, held)
     for which in _BOUNDED:
-        held[:, which] = np.where((state.parameters[:, which] <= 0.0) & (score[:, which] <= 0.0), 1.0, held[:, which])
-    information = _information(task, state, here, held)
-    step = np.linalg.solve(information, (score * (1.0 - held))[..., None])[..., 0]
-    # a step of more than 2 dB, or of more than half of what the largest 1/SNR leaves, is cut: the start was far
-    scale = np.maximum(np.abs(step[:, [LN_A, BETA]]).max(axis=1) / 0.5, np.abs(step[:, list(_BOUNDED)]).max(axis=1) / 0.1)
-    step /= np.maximum(scale, 1.0)[:, None]
+        # at its bound and pushed outwards: held there, and the others step as if it were a constant
+        held[:, which] = np.where((state.parameters[:, which] <= 0.0) & (step[:, which] <= 0.0), 1.0, held[:, which])
+    step = _scoring_step(task, state, here, score, held)
     before = state.parameters.copy()
-    state.parameters = before + step
-    for which in _BOUNDED:
-        state.parameters[:, which] = np.maximum(state.parameters[:, which], 0.0)
+    state.parameters = _stepped(before, step)
     return np.asarray(np.abs(state.parameters - before).max(axis=1))
+
+
+def _stepped(parameters: Floats, step: Floats) -> Floats:
+    """The step taken along log(a + b) and b's share of it: a and b themselves trade places along a bent valley."""
+    moved = parameters + step
+    a, b = np.exp(parameters[:, LN_A]), parameters[:, B]
+    by_total = (a * step[:, LN_A] + step[:, B]) / (a + b)
+    by_share = step[:, B] / (a + b) - b / (a + b) * by_total
+    log_total = np.log(a + b) + np.clip(by_total, -0.5, 0.5)
+    share = np.clip(b / (a + b) + np.clip(by_share, -0.2, 0.2), 0.0, _MOST_SHARE)
+    moved[:, LN_A] = log_total + np.log1p(-share)
+    moved[:, B] = np.exp(log_total) * share
+    moved[:, C] = np.maximum(moved[:, C], 0.0)
+    moved[:, BETA] = parameters[:, BETA] + np.clip(step[:, BETA], -0.5, 0.5)
+    return moved
+
+
+def _not_free(task: Task, replicates: int) -> Floats:
+    held = np.ones((replicates, 4))
+    held[:, list(task.free)] = 0.0
+    return held
+
+
+def _scoring_step(task: Task, state: _State, here: Pooled, score: Floats, held: Floats) -> Floats:
+    information = _information(task, state, here, held)
+    return np.asarray(np.linalg.solve(information, (score * (1.0 - held))[..., None])[..., 0])
 
 
 def _centre_shift(task: Task, state: _State, at_shift: Pooled) -> None:
@@ -184,7 +208,7 @@ def _move_tau(task: Task, state: _State, here: Pooled) -> Floats:
     """Paule and Mandel: the tau at which the standardised residuals have as many squares as degrees of freedom."""
     bits, m = task.counts.bits.sum(axis=-1), np.exp(here.log_ber)
     square = (task.counts.errors.sum(axis=-1) / (bits * m) - 1.0) ** 2
-    freedom = square.shape[1] - len(task.free) + _held_at_zero(task, state)
+    freedom = square.shape[1] - len(task.free)
     before = state.tau2.copy()
     binomial, by2 = (1.0 - m) / (bits * m), here.by_shift**2
     for _ in range(3):
@@ -219,8 +243,7 @@ def _move_imbalance(task: Task, state: _State) -> Floats:
 
 def _result(task: Task, state: _State, converged: np.ndarray[tuple[int, ...], np.dtype[np.bool_]]) -> Fit:
     here = _pooled(task, state)
-    held = np.ones((len(state.tau2), 4))
-    held[:, list(task.free)] = 0.0
+    held = _not_free(task, len(state.tau2))
     for which in _BOUNDED:
         held[:, which] = np.where(state.parameters[:, which] <= 0.0, 1.0, held[:, which])
     free = 1.0 - held
