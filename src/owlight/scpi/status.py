@@ -1,0 +1,39 @@
+"""Bits of the registers that a controller looks at."""
+
+from __future__ import annotations
+
+from enum import IntEnum
+
+
+class StandardEvent(IntEnum):
+    """Standard event register, `*ESR?` (IEEE 488.2, 11.5.1)."""
+
+    OPERATION_COMPLETE = 0
+    REQUEST_CONTROL = 1
+    QUERY_ERROR = 2
+    DEVICE_ERROR = 3
+    EXECUTION_ERROR = 4
+    COMMAND_ERROR = 5
+    USER_REQUEST = 6
+    POWER_ON = 7
+
+
+class Operation(IntEnum):
+    """Operation condition register, `STATus:OPERation:CONDition?` (SCPI-99 volume 1, 9)."""
+
+    CALIBRATING = 0
+    SETTLING = 1
+    RANGING = 2
+    SWEEPING = 3
+    MEASURING = 4
+    WAITING_FOR_TRIGGER = 5
+    WAITING_FOR_ARM = 6
+    CORRECTING = 7
+
+
+def has_bit(register: str, bit: int) -> bool:
+    """
+    >>> has_bit("+18", Operation.MEASURING), has_bit("2", Operation.MEASURING)
+    (True, False)
+    """
+    return bool(int(float(register)) >> bit & 1)
