@@ -3,12 +3,15 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 
 import pytest
 
 from owlight.bench.model import LO_INPUT, METER, PHOTODIODE, SIGNAL_INPUT
+from owlight.driver import Driver
 from owlight.errors import InputError, SafetyRefusal
 from owlight.plan import forecast
+from owlight.plan.safe_steps import spoken_setting
 from owlight.vocabulary.plan import Plan
 from owlight.vocabulary.terms import LO_POWER
 from owlight.vocabulary.values import Setting, Term
@@ -49,6 +52,8 @@ def test_condition_is_judged_like_a_point(plan_of: PlanOf) -> None:
         ({}, {'floor = "-75 dBm"': 'floor = "-40 dBm"'}, "point 0 asks for -40 dBm, which the tap cannot measure"),
         ({'"signal_laser.wavelength" = "1550.12 nm"': '"signal_laser.wavelength" = "1560 nm"'}, {},
          "1560 nm is outside the calibration, 1550.12 nm within 5 nm"),
+        ({'"signal_laser.power" = "10 dBm"': '"signal_laser.power" = "14 dBm"'}, {},
+         "signal_laser.power: 14 dBm is above the bench's highest_power of 13 dBm"),
         ({'reference_plane = "receiver signal input"': 'reference_plane = "tap input"'}, {}, "not the plane that"),
     ],
 )  # fmt: skip
@@ -119,6 +124,16 @@ def test_safe_steps_begin_with_attenuator(plan_of: PlanOf) -> None:
     assert [step.role for step in steps] == ["attenuator", "signal_laser", "local_oscillator"]
     assert all(step.command and step.query.endswith("?") and step.serial_number for step in steps)
     assert steps[0].words == "attenuator.attenuation to 60 dB" and steps[1].words == "signal_laser.output off"
+
+
+def test_guard_is_told_the_answer_as_spoken(drivers: dict[str, Driver]) -> None:
+    attenuation, output = Term("attenuator", "attenuation"), Term("signal_laser", "output")
+    dialect = replace(drivers["attenuator"].setting["attenuation"], factor=-1.0, suffix=" DB")
+    negative = replace(drivers["attenuator"], setting={"attenuation": dialect})
+    assert spoken_setting(negative, Setting(attenuation, 60.0)) == -60.0
+    assert spoken_setting(drivers["signal_laser"], Setting(output, False)) is False
+    worded = replace(drivers["signal_laser"].setting["output"], words={"true": "ENABle", "false": "DISable"})
+    assert spoken_setting(replace(drivers["signal_laser"], setting={"output": worded}), Setting(output, False)) == "DIS"
 
 
 def test_forecast_lists_every_stay_in_order(plan_of: PlanOf) -> None:

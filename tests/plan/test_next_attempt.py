@@ -70,7 +70,8 @@ def answer(attempt: Attempt, luck: int) -> AttemptFinished:
 
 def whole_night(one: Plan, luck: int, start: History = ()) -> list[Attempt]:
     """As the loop does it: the latest stay is still being demodulated when the next one is chosen."""
-    history, chosen = list(start), []
+    history = list(start)
+    chosen: list[Attempt] = []
     waiting: Attempt | None = None
     while True:
         known = [*history, finished(waiting, None)] if waiting else history

@@ -5,7 +5,7 @@ Round figures of a bench: they order the night's drift and warn of a full disk, 
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Collection, Iterable
 
 from owlight.vocabulary.plan import CaptureRequest, Condition, StopRule
 from owlight.vocabulary.terms import RECEIVED_POWER
@@ -23,7 +23,6 @@ TAP_READINGS = 10
 CAPTURE_S = 0.5
 BYTES_A_SECOND = 50e6
 """A record over a local network, so that the instrument and not the wire is the slower."""
-BYTES_A_SAMPLE = 1
 BYTES_A_STAY = 40_000
 """Settings, readings and every message of a stay in the logbook."""
 _AVERAGING = Term("power_meter", "averaging_time")
@@ -36,29 +35,26 @@ def start_s(conditions: Iterable[Condition]) -> float:
 
 def stay_s(
     settings: Iterable[Setting],
-    swept: Iterable[Term],
+    swept: Collection[Term],
     readings: int,
-    capture: CaptureRequest | None,
+    record_bytes: int,
     stop: StopRule,
 ) -> float:
-    """One stay: settings, tap and other readings on both sides, captures."""
+    """One stay: settings, tap and other readings on both sides, captures; no capture has 0 bytes."""
     averaging_s = next((float(each.value) for each in settings if each.term == _AVERAGING), READING_S)
-    terms = tuple(swept)
-    steering_s = sum(STEERING_S if term == RECEIVED_POWER else SETTING_S for term in terms)
-    tap_s = TAP_READINGS * averaging_s if RECEIVED_POWER in terms else 0.0
-    capture_s = 0.0
-    if capture is not None:
-        capture_s = stop.captures_per_stay * (CAPTURE_S + capture_bytes(capture) / BYTES_A_SECOND)
+    steering_s = sum(STEERING_S if term == RECEIVED_POWER else SETTING_S for term in swept)
+    tap_s = TAP_READINGS * averaging_s if RECEIVED_POWER in swept else 0.0
+    capture_s = stop.captures_per_stay * (CAPTURE_S + record_bytes / BYTES_A_SECOND) if record_bytes else 0.0
     return steering_s + tap_s + 2 * readings * READING_S + capture_s
 
 
-def capture_bytes(capture: CaptureRequest) -> int:
-    return len(capture.lanes) * capture.record_length * BYTES_A_SAMPLE
+def capture_bytes(capture: CaptureRequest, bytes_per_sample: int) -> int:
+    return len(capture.lanes) * capture.record_length * bytes_per_sample
 
 
-def night_bytes(stays: int, points: int, capture: CaptureRequest | None, stop: StopRule) -> int:
+def night_bytes(stays: int, points: int, capture: CaptureRequest | None, record_bytes: int, stop: StopRule) -> int:
     """The most a night may fill: "doubtful" may keep everything."""
     if capture is None:
         return stays * BYTES_A_STAY
     kept = {"none": 0, "one per point": points}.get(capture.keep, stays * stop.captures_per_stay)
-    return stays * BYTES_A_STAY + kept * capture_bytes(capture)
+    return stays * BYTES_A_STAY + kept * record_bytes

@@ -7,7 +7,7 @@ from collections.abc import Iterator, Mapping
 from owlight.bench import Bench, attenuation_for, lo_laser_power_dbm, lowest_received_power_dbm
 from owlight.driver import Driver
 from owlight.errors import Problem
-from owlight.plan.limits import LO_LASER_POWER, SIGNAL_POWER
+from owlight.plan.limits import ATTENUATION, LO_LASER_POWER, SIGNAL_POWER
 from owlight.quantity import words
 from owlight.sequence import Sequence
 from owlight.vocabulary.plan import Point
@@ -34,6 +34,7 @@ def misfits(
     found = [
         *_roles(bench, sequence, settings),
         *_ranges(drivers, asked),
+        *_beliefs(bench, asked),
         *_reach(bench, sequence, points),
         *_planes(bench, sequence),
         *_calibration(bench, asked),
@@ -82,6 +83,20 @@ def _ranges(drivers: Mapping[str, Driver], asked: tuple[Setting, ...]) -> Found:
         if not low <= setting.value <= high:
             span = f"{words(low, unit)} to {words(high, unit)}"
             yield str(setting.term), f"{words(setting.value, unit)} is outside the instrument's range, {span}"
+
+
+def _beliefs(bench: Bench, asked: tuple[Setting, ...]) -> Found:
+    """What the bench file says of its own instruments; their worst cases were computed with it."""
+    for setting in asked:
+        role = bench.role.get(setting.term.role)
+        maximum_db = bench.light_path.attenuator_maximum_db
+        if setting.term == ATTENUATION and not 0.0 <= float(setting.value) <= maximum_db:
+            yield str(ATTENUATION), f"{words(float(setting.value), 'dB')} is outside 0 dB to {words(maximum_db, 'dB')}"
+        if role is None or role.highest_power_dbm is None or setting.term.name != "power":
+            continue
+        if float(setting.value) > role.highest_power_dbm:
+            highest = f"the bench's highest_power of {words(role.highest_power_dbm, 'dBm')}"
+            yield str(setting.term), f"{words(float(setting.value), 'dBm')} is above {highest}"
 
 
 def _reach(bench: Bench, sequence: Sequence, points: tuple[Point, ...]) -> Found:

@@ -9,7 +9,7 @@ from dataclasses import dataclass
 from owlight.bench import Bench
 from owlight.driver import Driver
 from owlight.errors import InputError
-from owlight.plan.durations import CLOSING_S, night_bytes, start_s, stay_s
+from owlight.plan.durations import CLOSING_S, capture_bytes, night_bytes, start_s, stay_s
 from owlight.plan.fit import misfits
 from owlight.plan.limits import highest_powers, refuse_over_limits, refuse_unattended
 from owlight.plan.points import order_of, points_of
@@ -51,7 +51,8 @@ def make_plan(request: PlanRequest) -> Plan:
         raise InputError("The sequence does not fit the bench; nothing was opened:", problems)
     order = order_of(sequence, request.seed)
     stop = StopRule(**vars(sequence.stop))
-    one_stay_s = stay_s(settings, (axis.term for axis in sequence.axes), len(sequence.readings), capture, stop)
+    record_bytes = capture_bytes(capture, _bytes_per_sample(request.drivers)) if capture else 0
+    one_stay_s = stay_s(settings, [axis.term for axis in sequence.axes], len(sequence.readings), record_bytes, stop)
     stays = sum(map(len, order))
     forecast_s = start_s(sequence.conditions) + stays * one_stay_s + CLOSING_S
     powers = highest_powers(bench, sequence, points)
@@ -74,9 +75,14 @@ def make_plan(request: PlanRequest) -> Plan:
         highest_power=powers,
         stay_s=one_stay_s,
         forecast_s=forecast_s,
-        forecast_bytes=night_bytes(stays, len(points), capture, stop),
+        forecast_bytes=night_bytes(stays, len(points), capture, record_bytes, stop),
         safe_state=safe_steps(bench, request.drivers, request.resources),
     )
+
+
+def _bytes_per_sample(drivers: Mapping[str, Driver]) -> int:
+    record = drivers["oscilloscope"].record if "oscilloscope" in drivers else None
+    return record.bytes_per_sample if record is not None else 2
 
 
 def capture_request(sequence: Sequence) -> CaptureRequest | None:

@@ -6,10 +6,11 @@ from collections.abc import Mapping
 
 from owlight.bench import Bench, safe_settings
 from owlight.driver import Driver, program_message, query
+from owlight.driver.conversion import spoken
 from owlight.quantity import words
 from owlight.vocabulary.plan import SafeStep
 from owlight.vocabulary.terms import TERMS
-from owlight.vocabulary.values import Setting
+from owlight.vocabulary.values import Setting, Value
 
 
 def safe_steps(bench: Bench, drivers: Mapping[str, Driver], resources: Mapping[str, str]) -> tuple[SafeStep, ...]:
@@ -19,16 +20,29 @@ def safe_steps(bench: Bench, drivers: Mapping[str, Driver], resources: Mapping[s
 
 def _step(bench: Bench, driver: Driver, resource: str, setting: Setting) -> SafeStep:
     term = setting.term
+    tolerance = driver.tolerance_of(term)
     return SafeStep(
         role=term.role,
         resource=resource,
         serial_number=bench.role[term.role].serial_number,
         command=program_message(driver, term, setting.value),
         query=query(driver, term),
-        expected=setting.value,
-        tolerance=driver.tolerance_of(term),
+        expected=spoken_setting(driver, setting),
+        tolerance=None if tolerance is None else tolerance * abs(driver.setting[term.name].factor),
         words=_words(setting),
     )
+
+
+def spoken_setting(driver: Driver, setting: Setting) -> Value:
+    """What the instrument is expected to answer, in its own words: the guard has no driver to translate with.
+
+    A number as it speaks it, False where it speaks 0 or OFF, or its own word for off.
+    """
+    dialect = driver.setting[setting.term.name]
+    text = spoken(dialect, setting.term, setting.value)
+    if isinstance(setting.value, bool):
+        return text if dialect.words else setting.value
+    return float(text.removesuffix(dialect.suffix))
 
 
 def _words(setting: Setting) -> str:
