@@ -3,9 +3,21 @@
 Pure functions of values; scipy is imported where it is used, so that a forecast need not wait for it.
 """
 
+from owlight.statistics.checks import Evidence, run_checks
 from owlight.statistics.intervals import exact_interval, upper_limit
 from owlight.statistics.pooling import groups, pool
 from owlight.statistics.request import Reason, SensitivityRequest
 from owlight.statistics.sensitivity import budget, estimate
 
-__all__ = ["Reason", "SensitivityRequest", "budget", "estimate", "exact_interval", "groups", "pool", "upper_limit"]
+__all__ = [
+    "Evidence",
+    "Reason",
+    "SensitivityRequest",
+    "budget",
+    "estimate",
+    "exact_interval",
+    "groups",
+    "pool",
+    "run_checks",
+    "upper_limit",
+]

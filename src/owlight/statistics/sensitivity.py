@@ -82,7 +82,9 @@ def estimate(request: SensitivityRequest) -> Sensitivity | Reason:
             f"{len(stays)} stays at {len(chosen)} powers lie near the threshold and are believed; a sensitivity with "
             f"an interval needs at least {len(free) + 2} stays at {len(free)} powers."
         )
-    bracketed = any(p.ber is not None and request.threshold_ber <= p.ber <= NEAR * request.threshold_ber for p in points)
+    bracketed = any(
+        p.ber is not None and request.threshold_ber <= p.ber <= NEAR * request.threshold_ber for p in points
+    )
     bracketed &= any(request.threshold_ber / NEAR <= (p.ber or p.ber_high) < request.threshold_ber for p in points)
     table = tabulate(request.ber_of_snr_db)
     counts = counts_of(stays, request.converter_noise if request.vertical == "follow" else {})
@@ -194,7 +196,9 @@ def _zero_u_db(request: SensitivityRequest, stays: tuple[Stay, ...], fitted: Fit
     moved = []
     for side in (-zero_w, zero_w):
         power_w = np.maximum(fitted.task.counts.power_w + side, 0.1 * fitted.task.counts.power_w)
-        again = _fitted(fitted.task.table, fitted.task.counts.with_power(power_w), fitted.task.free, fitted.threshold_ber)
+        again = _fitted(
+            fitted.task.table, fitted.task.counts.with_power(power_w), fitted.task.free, fitted.threshold_ber
+        )
         if not isinstance(again, Reason):
             moved.append(again.power_dbm)
     return abs(moved[1] - moved[0]) / 2.0 if len(moved) == 2 else 0.0
