@@ -21,9 +21,9 @@ from owlight.vocabulary.result import Stay
 
 Floats = npt.NDArray[np.float64]
 
-LN_A, B, C, BETA = range(4)
-PHYSICAL = (LN_A, B)
-PHYSICAL_WITH_RESIDUE = (LN_A, B, C)
+LN_A, FLOOR, RESIDUE, BETA = range(4)
+PHYSICAL = (LN_A, FLOOR)
+PHYSICAL_WITH_RESIDUE = (LN_A, FLOOR, RESIDUE)
 LOCAL = (LN_A, BETA)
 LOWEST_DB, HIGHEST_DB, STEP_DB = -30.0, 45.0, 0.005
 _DB = np.log(10.0) / 10.0
@@ -78,7 +78,7 @@ class Counts:
 
     @property
     def share(self) -> Floats:
-        return self.bits / self.bits.sum(axis=1, keepdims=True)
+        return np.asarray(self.bits / self.bits.sum(axis=1, keepdims=True))
 
     def with_errors(self, errors: Floats) -> Counts:
         return Counts(self.power_w, self.power_u_db, errors, self.bits, self.converter, self.point)
@@ -126,7 +126,7 @@ def pooled(
     `imbalance` is the log of the ratio of the two polarisations' a; half of it goes to each.
     """
     extra = (None,) * (log_power.ndim - 1)
-    ln_a, b, c, beta = (parameters[(slice(None), which, *extra, None)] for which in (LN_A, B, C, BETA))
+    ln_a, b, c, beta = (parameters[(slice(None), which, *extra, None)] for which in (LN_A, FLOOR, RESIDUE, BETA))
     sides = np.array([0.5, -0.5])[: share.shape[-1]] if share.shape[-1] > 1 else np.zeros(1)
     log_p = log_power[..., None]
     noise = np.exp(ln_a + sides * imbalance[(slice(None), *extra, None)] - beta * log_p)

@@ -15,12 +15,24 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from owlight.statistics.curve import BETA, C, LN_A, B, BerTable, Counts, Floats, Pooled, pooled
+from owlight.statistics.curve import (
+    BETA,
+    FLOOR,
+    LN_A,
+    LOWEST_DB,
+    RESIDUE,
+    STEP_DB,
+    BerTable,
+    Counts,
+    Floats,
+    Pooled,
+    pooled,
+)
 
 _ROUNDS = 60
 _CLOSE = 1e-5
 """Of log a, b and tau in dB: 4e-5 dB of power, far below any interval."""
-_BOUNDED = (B, C)
+_BOUNDED = (FLOOR, RESIDUE)
 _MOST_SHARE = 0.98
 """Of 1/SNR at the middle of the powers that b may have; beyond it the curve is flat."""
 
@@ -59,7 +71,7 @@ class _State:
 
 
 def fit(task: Task) -> Fit:
-    """Fisher scoring for the curve, with tau and the balance brought along; all replicates of `counts.errors` at once."""
+    """Fisher scoring for the curve, tau and the balance brought along; all replicates of `counts.errors` at once."""
     state = _start(task)
     converged = np.zeros(len(state.tau2), dtype=bool)
     for _ in range(_ROUNDS):
@@ -73,21 +85,13 @@ def fit(task: Task) -> Fit:
     return _result(task, state, converged)
 
 
-def log_likelihood(task: Task, found: Fit) -> Floats:
-    """Marginal log-likelihood (R) of the pooled counts, less the binomial coefficients."""
-    state = _State(found.parameters, found.imbalance, found.tau_db**2, np.zeros(found.residual.shape))
-    for _ in range(10):
-        _centre_shift(task, state, _pooled(task, state, state.shift))
-    return np.asarray(_integrate(task, state)[1].sum(axis=-1))
-
-
 def _start(task: Task) -> _State:
     """A straight line through the 1/SNR that each stay's ratio means, over 1/P."""
     counts, table = task.counts, task.table
     errors, bits = counts.errors.sum(axis=-1), counts.bits.sum(axis=-1)
     axis = np.arange(len(table.log_ber))[::-1]
     place = np.interp(np.log((errors + 0.5) / (bits + 1.0)), table.log_ber[::-1], axis)
-    z = 10.0 ** (-(-30.0 + 0.005 * place) / 10.0)
+    z = 10.0 ** (-(LOWEST_DB + STEP_DB * place) / 10.0)
     weight = (errors + 0.5) / z**2  # relative error of z is nearly that of the ratio
     x = np.exp(-counts.log_power)
     parameters = np.zeros((len(errors), 4))
@@ -95,9 +99,9 @@ def _start(task: Task) -> _State:
     mean_x, mean_z = (weight * x).sum(-1) / weight.sum(-1), (weight * z).sum(-1) / weight.sum(-1)
     spread = (weight * (x - mean_x[:, None]) ** 2).sum(-1)
     slope = (weight * (x - mean_x[:, None]) * (z - mean_z[:, None])).sum(-1) / np.maximum(spread, 1e-30)
-    if B in task.free:
+    if FLOOR in task.free:
         intercept = np.clip(mean_z - slope * mean_x, 0.0, 0.5 * z.min(axis=-1))
-        parameters[:, B] = intercept
+        parameters[:, FLOOR] = intercept
         parameters[:, LN_A] = np.log((mean_z - intercept) / mean_x)
     else:
         parameters[:, LN_A] = np.log(mean_z / mean_x)
@@ -128,7 +132,7 @@ def _information(task: Task, state: _State, here: Pooled, held: Floats) -> Float
 
 def _move_parameters(task: Task, state: _State, here: Pooled) -> Floats:
     _centre_shift(task, state, _pooled(task, state, state.shift))
-    score, _ = _integrate(task, state)
+    score = _marginal_score(task, state)
     held = _not_free(task, len(score))
     step = _scoring_step(task, state, here, score, held)
     for which in _BOUNDED:
@@ -143,14 +147,14 @@ def _move_parameters(task: Task, state: _State, here: Pooled) -> Floats:
 def _stepped(parameters: Floats, step: Floats) -> Floats:
     """The step taken along log(a + b) and b's share of it: a and b themselves trade places along a bent valley."""
     moved = parameters + step
-    a, b = np.exp(parameters[:, LN_A]), parameters[:, B]
-    by_total = (a * step[:, LN_A] + step[:, B]) / (a + b)
-    by_share = step[:, B] / (a + b) - b / (a + b) * by_total
+    a, b = np.exp(parameters[:, LN_A]), parameters[:, FLOOR]
+    by_total = (a * step[:, LN_A] + step[:, FLOOR]) / (a + b)
+    by_share = step[:, FLOOR] / (a + b) - b / (a + b) * by_total
     log_total = np.log(a + b) + np.clip(by_total, -0.5, 0.5)
     share = np.clip(b / (a + b) + np.clip(by_share, -0.2, 0.2), 0.0, _MOST_SHARE)
     moved[:, LN_A] = log_total + np.log1p(-share)
-    moved[:, B] = np.exp(log_total) * share
-    moved[:, C] = np.maximum(moved[:, C], 0.0)
+    moved[:, FLOOR] = np.exp(log_total) * share
+    moved[:, RESIDUE] = np.maximum(moved[:, RESIDUE], 0.0)
     moved[:, BETA] = parameters[:, BETA] + np.clip(step[:, BETA], -0.5, 0.5)
     return moved
 
@@ -182,8 +186,8 @@ def _excess(task: Task, log_ber: Floats) -> tuple[Floats, Floats]:
     return (errors - bits * m) / (1.0 - m), bits * m / (1.0 - m)
 
 
-def _integrate(task: Task, state: _State) -> tuple[Floats, Floats]:
-    """Score (R, 4) of the marginal likelihood, and its logarithm for each stay (R, N)."""
+def _marginal_score(task: Task, state: _State) -> Floats:
+    """Derivative (R, 4) of the log-likelihood with the shift of each stay integrated out."""
     at_mode = _pooled(task, state, state.shift)
     _, weight = _excess(task, at_mode.log_ber)
     width = 1.0 / np.sqrt(weight * at_mode.by_shift**2 + 1.0 / state.tau2[:, None])
@@ -196,12 +200,9 @@ def _integrate(task: Task, state: _State) -> tuple[Floats, Floats]:
     errors, bits = task.counts.errors.sum(axis=-1)[..., None], task.counts.bits.sum(axis=-1)[None, :, None]
     logs = errors * there.log_ber + (bits - errors) * np.log1p(-np.exp(there.log_ber))
     logs += np.log(node_weights) + 0.5 * nodes**2 - 0.5 * shift**2 / state.tau2[:, None, None]
-    highest = logs.max(axis=-1, keepdims=True)
-    relative = np.exp(logs - highest)
-    total = relative.sum(axis=-1)
-    score = np.einsum("rnq,rnqi->ri", relative / total[..., None] * excess, there.by_parameter)
-    log_each = highest[..., 0] + np.log(total * width / np.sqrt(2.0 * np.pi * state.tau2[:, None]))
-    return score, log_each
+    likely = np.exp(logs - logs.max(axis=-1, keepdims=True))
+    likely /= likely.sum(axis=-1, keepdims=True)
+    return np.asarray(np.einsum("rnq,rnqi->ri", likely * excess, there.by_parameter))
 
 
 def _move_tau(task: Task, state: _State, here: Pooled) -> Floats:
@@ -238,7 +239,7 @@ def _move_imbalance(task: Task, state: _State) -> Floats:
     information = (errors * first * (1.0 - first) * lean**2).sum(axis=1)
     step = np.clip(score / np.maximum(information, 1e-12), -0.3, 0.3)
     state.imbalance = state.imbalance + step
-    return np.abs(step)
+    return np.asarray(np.abs(step))
 
 
 def _result(task: Task, state: _State, converged: np.ndarray[tuple[int, ...], np.dtype[np.bool_]]) -> Fit:

@@ -15,13 +15,13 @@ from owlight.quantity import dbm
 from owlight.statistics.bootstrap import bootstrap_t
 from owlight.statistics.curve import (
     BETA,
+    FLOOR,
     LN_A,
     LOCAL,
     PHYSICAL,
     PHYSICAL_WITH_RESIDUE,
-    B,
+    RESIDUE,
     BerTable,
-    C,
     Counts,
     counts_of,
     crossing,
@@ -185,7 +185,7 @@ def _physical(fitted: Fitted) -> tuple[tuple[float, ...], float, float]:
         ln_a = math.log(beta * z) + fitted.log_power
         b = (1.0 - beta) * z
     a_w = tuple(float(math.exp(ln_a + side * imbalance) * reference_w) for side in sides)
-    return a_w, float(b), float(c / reference_w) if C in fitted.task.free else 0.0
+    return a_w, float(b), float(c / reference_w) if RESIDUE in fitted.task.free else 0.0
 
 
 def _zero_u_db(request: SensitivityRequest, stays: tuple[Stay, ...], fitted: Fitted) -> float:
@@ -217,8 +217,8 @@ def zero_at_plane_w(stays: tuple[Stay, ...], meter_zero_u_w: float | None) -> fl
 
 
 def _method(request: SensitivityRequest, stays: tuple[Stay, ...], fitted: Fitted, boundary: bool, k: float) -> str:
-    model = "1/SNR = a/P + b" if B in fitted.task.free else "local two-parameter fit, 1/SNR = a P^-beta"
-    if C in fitted.task.free:
+    model = "1/SNR = a/P + b" if FLOOR in fitted.task.free else "local two-parameter fit, 1/SNR = a P^-beta"
+    if RESIDUE in fitted.task.free:
         model += " + c P"
     interval = "parametric bootstrap" if boundary else f"Student's t, {fitted.freedom} degrees of freedom"
     points = fitted.task.counts.point

@@ -70,7 +70,7 @@ def lo_intensity_noise_a2_per_hz(pair_current_a: float, rin_db_per_hz: float, ba
 def lo_current_of_least_noise_a(thermal_a_per_sqrt_hz: float, rin_db_per_hz: float, balance_db: float) -> float:
     """The pair's photocurrent at which the residual intensity noise equals the thermal noise: the best one.
 
-    More local oscillator no longer helps there. B. Zhang, C. Malouin, T. Schmidt, Optics Express 20(3), 2012 (abstract).
+    More local oscillator no longer helps there. B. Zhang et al., Optics Express 20(3), 2012 (abstract).
 
     >>> round(lo_current_of_least_noise_a(20e-12, -145.0, -20.0) * 1e3, 3)  # mA
     3.557

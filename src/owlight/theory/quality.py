@@ -13,7 +13,7 @@ PEAK_TO_AVERAGE_SQUARED: dict[str, float] = {
     "64QAM": 7 / 3,
     "256QAM": 45 / 17,
 }
-"""Peak over average power of the constellation; R. Schmogrow et al., IEEE Photonics Technology Letters 24(1), 61, 2012."""
+"""Peak over average power; R. Schmogrow et al., IEEE Photonics Technology Letters 24(1), 61, 2012."""
 
 
 def ber_of_q(q: float) -> float:

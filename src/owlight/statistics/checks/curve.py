@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
+from itertools import pairwise
 
 import numpy as np
 
@@ -58,7 +59,7 @@ def monotonic(points: Sequence[CurvePoint], scatter_db: float = STAY_SCATTER_DB,
     if len(usable) < 2:
         return not_evaluated(name, "run", "fewer than two points with ten errors")
     worst, words = -math.inf, ""
-    for lower, upper in zip(usable, usable[1:], strict=False):
+    for lower, upper in pairwise(usable):
         rise = math.log((upper.ber or 1.0) / (lower.ber or 1.0))
         sigma = math.hypot(*(_log_sigma(p, scatter_db) for p in (lower, upper)))
         if rise / sigma > worst:

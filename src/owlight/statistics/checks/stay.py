@@ -92,7 +92,9 @@ def wrong_lock(subject: str, tributaries: Sequence[Tributary]) -> Check:
         )
     total_errors, total_bits = sum(e for _, e, _ in counted), sum(n for _, _, n in counted)
     low, high = exact_interval(total_errors, total_bits)
-    hit = next((fraction for fraction in WRONG_LOCK_FRACTIONS if low <= fraction <= high), None)
+    # noise alone can give 1/8; as a sign of a wrong lock it needs a tributary that is far worse than that
+    suspects = [fraction for fraction in WRONG_LOCK_FRACTIONS if fraction >= 0.25 or worst >= 2.0 * fraction]
+    hit = next((fraction for fraction in suspects if low <= fraction <= high), None)
     ratio = total_errors / total_bits
     if hit is None:
         return certain(name, subject, ratio, 1.0 / 3.0, False, f"the BER of {ratio:.3g} is no fraction of a wrong lock")
