@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from dataclasses import asdict
 
 from owlight.cli.options import BenchFile, Json, Seed, SequenceFile
 
@@ -16,6 +17,6 @@ def forecast(sequence: SequenceFile, bench: BenchFile, seed: Seed = None, as_jso
 
     found = forecast_of(plan_of(resolve(sequence, bench), seed=seed))
     if as_json:
-        print(json.dumps(found.as_json()))
+        print(json.dumps(asdict(found)))
     else:
         print_forecast(found)

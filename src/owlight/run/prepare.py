@@ -6,7 +6,7 @@ from owlight.errors import BenchError
 from owlight.run.night import Night
 from owlight.statistics.drift import slope
 from owlight.vocabulary.events import Note
-from owlight.vocabulary.plan import CaptureRequest, Condition, Plan, Signal
+from owlight.vocabulary.plan import Condition, Plan
 from owlight.vocabulary.seeds import seed_for
 from owlight.vocabulary.terms import LO_POWER, RECEIVED_POWER
 from owlight.vocabulary.values import Reading, Setting, Term, Value
@@ -35,34 +35,8 @@ def prepare(night: Night) -> None:
 
 
 def dark_settings(plan: Plan) -> tuple[Setting, ...]:
-    """What is set before any light: the signal, the oscilloscope, and the sequence's own settings but for the lasers."""
-    own = tuple(
-        setting for setting in plan.settings if setting.term not in _OF_LIGHT_UP and setting.term.name != "wavelength"
-    )
-    signal = _signal_settings(plan.signal) if plan.signal else ()
-    scope = _record_settings(plan.capture) if plan.capture else ()
-    named = {setting.term for setting in own}
-    return tuple(s for s in (*signal, *scope) if s.term not in named) + own
-
-
-def _signal_settings(signal: Signal) -> tuple[Setting, ...]:
-    values: dict[str, Value] = {
-        "modulation": signal.modulation,
-        "symbol_rate": signal.symbol_rate_bd,
-        "polarisations": signal.polarisations,
-        "rolloff": signal.rolloff,
-        "pattern_order": signal.pattern_order,
-    }
-    values |= {f"offset_{lane}": offset for lane, offset in enumerate(signal.tributary_offsets, 1)}
-    values["output"] = True
-    return tuple(Setting(Term("pattern_source", name), value) for name, value in values.items())
-
-
-def _record_settings(request: CaptureRequest) -> tuple[Setting, ...]:
-    return (
-        Setting(Term("oscilloscope", "sample_rate"), request.sample_rate_hz),
-        Setting(Term("oscilloscope", "record_length"), request.record_length),
-    )
+    """What is set before any light: all but the lasers' powers and outputs; wavelength is an action of its own."""
+    return tuple(s for s in plan.settings if s.term not in _OF_LIGHT_UP and s.term.name != "wavelength")
 
 
 def _first(plan: Plan, term: Term) -> Value | None:

@@ -19,7 +19,7 @@ from owlight.vocabulary.seeds import seed_for
 from owlight.vocabulary.terms import RECEIVED_POWER
 from owlight.vocabulary.values import Term
 
-# 4 x rms to the rail: a Gaussian tail of 6e-5 clips, and the converter costs about 0.04 dB of QPSK at 5.5 effective bits
+# 4 x rms to the rail: a Gaussian tail of 6e-5 clips; the converter costs about 0.04 dB of QPSK at 5.5 effective bits
 FILL_RMS = 4.0
 LADDER_STEPS_PER_DECADE = 12  # ratio 1.21: the range is never more than that too wide
 _FIRST_RANGE_V = 0.4
