@@ -1,0 +1,61 @@
+"""What is proven of the light, and the refusal of any setting that could break a damage limit."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+from owlight.bench import Bench, LightState, refuse_if_over
+from owlight.errors import SafetyRefusal
+from owlight.vocabulary.values import Term, Value
+
+SIGNAL_OUTPUT = Term("signal_laser", "output")
+SIGNAL_POWER = Term("signal_laser", "power")
+LO_OUTPUT = Term("local_oscillator", "output")
+LO_POWER = Term("local_oscillator", "power")
+ATTENUATION = Term("attenuator", "attenuation")
+BIAS = Term("receiver", "bias")
+FIELDS = {
+    SIGNAL_OUTPUT: "signal_on",
+    SIGNAL_POWER: "signal_power_dbm",
+    LO_OUTPUT: "lo_on",
+    LO_POWER: "lo_power_dbm",
+    ATTENUATION: "attenuation_db",
+}
+
+
+class LightKeeper:
+    """A value that was commanded but not read back is unknown, and unknown counts as the worst."""
+
+    def __init__(self, bench: Bench) -> None:
+        self._bench = bench
+        self.state = LightState()
+
+    def judge(self, term: Term, value: Value, point: int | None = None) -> None:
+        """Before a setting: SafetyRefusal if it could exceed a limit. What darkens is never refused."""
+        if term == BIAS and not value and self.lit:
+            raise SafetyRefusal(
+                "The receiver's bias must stay on while light could reach its photodiodes. "
+                "Nothing was set; turn the sources off first."
+            )
+        if term in FIELDS and not self._darkens(term, value):
+            refuse_if_over(self._bench, replace(self.state, **{FIELDS[term]: value}), point)
+
+    @property
+    def lit(self) -> bool:
+        return self.state.signal_on is not False or self.state.lo_on is not False
+
+    def _darkens(self, term: Term, value: Value) -> bool:
+        stands = getattr(self.state, FIELDS[term])
+        if isinstance(value, bool):
+            return not value
+        if term == ATTENUATION:
+            return stands is None or float(value) >= stands
+        return stands is not None and float(value) <= stands
+
+    def forget(self, term: Term) -> None:
+        if term in FIELDS:
+            self.state = replace(self.state, **{FIELDS[term]: None})
+
+    def learn(self, term: Term, read_back: Value | None) -> None:
+        if term in FIELDS:
+            self.state = replace(self.state, **{FIELDS[term]: read_back})
