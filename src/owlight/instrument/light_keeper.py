@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from typing import Any
 
 from owlight.bench import Bench, LightState, refuse_if_over
 from owlight.errors import SafetyRefusal
@@ -38,7 +39,7 @@ class LightKeeper:
                 "Nothing was set; turn the sources off first."
             )
         if term in FIELDS and not self._darkens(term, value):
-            refuse_if_over(self._bench, replace(self.state, **{FIELDS[term]: value}), point)
+            refuse_if_over(self._bench, self._with(term, value), point)
 
     @property
     def lit(self) -> bool:
@@ -49,13 +50,17 @@ class LightKeeper:
         if isinstance(value, bool):
             return not value
         if term == ATTENUATION:
-            return stands is None or float(value) >= stands
+            least_db = self._bench.light_path.attenuator_maximum_db if stands is None else stands
+            return float(value) >= least_db
         return stands is not None and float(value) <= stands
 
     def forget(self, term: Term) -> None:
-        if term in FIELDS:
-            self.state = replace(self.state, **{FIELDS[term]: None})
+        self.learn(term, None)
 
     def learn(self, term: Term, read_back: Value | None) -> None:
         if term in FIELDS:
-            self.state = replace(self.state, **{FIELDS[term]: read_back})
+            self.state = self._with(term, read_back)
+
+    def _with(self, term: Term, value: Value | None) -> LightState:
+        changed: dict[str, Any] = {FIELDS[term]: value}
+        return replace(self.state, **changed)

@@ -1,0 +1,112 @@
+"""Light up, make dark, change the wavelength, zero the meter: each as one action in the order that is safe."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+from owlight.errors import BenchError, InstrumentError
+from owlight.instrument.light_keeper import ATTENUATION, BIAS, LO_OUTPUT, SIGNAL_OUTPUT, SIGNAL_POWER
+from owlight.quantity import watts, words
+from owlight.vocabulary.values import Term
+
+if TYPE_CHECKING:
+    from owlight.instrument.open_bench import OpenBench
+
+METER = Term("power_meter", "power")
+ZERO = Term("power_meter", "zero")
+AVERAGING = Term("power_meter", "averaging_time")
+_WAVELENGTHS = tuple(
+    Term(role, "wavelength") for role in ("signal_laser", "local_oscillator", "power_meter", "attenuator")
+)
+_DARK_OVER_FLOOR = 10.0
+"""A point is refused below ten times the floor, so darkness is what no point could be taken for."""
+_ZERO_READINGS = 3
+
+
+def light_up(bench: OpenBench, lo_power_dbm: float | None, signal_power_dbm: float | None) -> None:
+    """Bias, attenuator maximum read back, local oscillator, signal; a power of None stays as it stands."""
+    if bench.knows(BIAS):
+        bench.set(BIAS, True)
+    if bench.knows(ATTENUATION):
+        bench.set(ATTENUATION, bench.paper.light_path.attenuator_maximum_db)
+    if bench.knows(LO_OUTPUT):
+        if lo_power_dbm is not None:
+            bench.set_lo_power(lo_power_dbm)
+        bench.set(LO_OUTPUT, True)
+    if bench.knows(SIGNAL_OUTPUT):
+        if signal_power_dbm is not None:
+            bench.set(SIGNAL_POWER, signal_power_dbm)
+        bench.set(SIGNAL_OUTPUT, True)
+
+
+def make_dark(bench: OpenBench) -> None:
+    """Attenuator maximum, then the sources off, each read back."""
+    if bench.knows(ATTENUATION):
+        bench.set(ATTENUATION, bench.paper.light_path.attenuator_maximum_db)
+    for output in (SIGNAL_OUTPUT, LO_OUTPUT):
+        if bench.knows(output):
+            bench.set(output, False)
+
+
+def set_wavelength(bench: OpenBench, wavelength_nm: float) -> None:
+    """In the dark: sources, meter and attenuator together. Light that was on comes on again behind the maximum."""
+    record = bench.paper.plane_minus_tap
+    if abs(wavelength_nm - record.wavelength_nm) > record.wavelength_span_nm:
+        raise BenchError(
+            f"The calibration of the power path holds at {words(record.wavelength_nm, 'nm')} within "
+            f"{words(record.wavelength_span_nm, 'nm')}, not at {words(wavelength_nm, 'nm')}. "
+            "Nothing was set; choose a wavelength inside, or calibrate the path there."
+        )
+    was = bench.light
+    make_dark(bench)
+    for term in _WAVELENGTHS:
+        if bench.knows(term):
+            bench.set(term, wavelength_nm)
+    # only what was proven to be on: unknown light is not lit again
+    if bench.knows(LO_OUTPUT) and was.lo_on:
+        bench.set(LO_OUTPUT, True)
+    if bench.knows(SIGNAL_OUTPUT) and was.signal_on:
+        bench.set(SIGNAL_OUTPUT, True)
+
+
+def zero_meter(bench: OpenBench) -> None:
+    """Forced and proven dark: sources read back off, the level below that of any point; then zero and look again."""
+    make_dark(bench)
+    wait_averaged(bench)
+    floor_w = _floor_w(bench)
+    dark = bench.read(METER, _ZERO_READINGS, "dark before zero").value
+    if dark is None or abs(dark) > _DARK_OVER_FLOOR * floor_w:
+        raise InstrumentError(
+            f"The meter was not zeroed, because it is not dark: it reads {_level(dark)} with the sources off. "
+            "The bench stays dark; look for light at the tap.",
+            "power_meter",
+        )
+    bench.act_plainly(ZERO)
+    wait_averaged(bench)
+    left = bench.read(METER, _ZERO_READINGS, "dark after zero").value
+    if left is None or abs(left) > floor_w:
+        raise InstrumentError(
+            f"The meter still reads {_level(left)} in the dark after its zero, more than its floor. "
+            "The bench stays dark; zero it by hand, or correct its floor in the bench file.",
+            "power_meter",
+        )
+
+
+def wait_averaged(bench: OpenBench) -> None:
+    """A full averaging window: until then a reading still holds light from before the change."""
+    if not bench.knows(AVERAGING):
+        return
+    window_s = bench.stands(AVERAGING)
+    if isinstance(window_s, float):
+        bench.clock.sleep(window_s)
+
+
+def _floor_w(bench: OpenBench) -> float:
+    floor_dbm = bench.paper.role["power_meter"].floor_dbm
+    if floor_dbm is None:
+        raise BenchError("The bench file states no floor of the power meter, so darkness cannot be judged. State it.")
+    return watts(floor_dbm)
+
+
+def _level(power_w: float | None) -> str:
+    return "not a number" if power_w is None else words(power_w, "W", 3)
