@@ -1,0 +1,1 @@
+"""What an instrument of each kind does beyond holding settings."""

@@ -1,0 +1,126 @@
+"""The process of the simulated bench: reads the files, serves every role, ends when nobody needs it."""
+
+from __future__ import annotations
+
+import json
+import os
+import signal
+import sys
+import threading
+import time
+from collections.abc import Mapping
+from dataclasses import dataclass
+from pathlib import Path
+
+from owlight import shipped
+from owlight.errors import InputError, OwlightError, Problem
+from owlight.simulation.device.bench_time import BenchTime
+from owlight.simulation.device.instrument import Instrument
+from owlight.simulation.device.model import InstrumentFile, read_instrument
+from owlight.simulation.instruments.build import build
+from owlight.simulation.light import SharedLight
+from owlight.simulation.physics import StandIn
+from owlight.simulation.servers.control import ControlServer
+from owlight.simulation.servers.faults import Faults
+from owlight.simulation.servers.hislip import HislipServer
+from owlight.simulation.servers.raw_socket import RawSocketServer
+from owlight.vocabulary.terms import ROLES
+
+_GRACE_S = 5.0  # a guard may still open links after its runner died
+_LOOK_S = 0.2
+
+
+@dataclass(frozen=True)
+class Served:
+    """Everything that listens."""
+
+    hislip: HislipServer
+    sockets: Mapping[str, RawSocketServer]
+    control: ControlServer
+
+    def announcement(self) -> dict[str, object]:
+        roles = {
+            role: {"hislip": self.hislip.resource(role), "socket": server.resource}
+            for role, server in self.sockets.items()
+        }
+        return {"roles": roles, "control": self.control.listener.port}
+
+    @property
+    def open_sessions(self) -> int:
+        listeners = [self.hislip.listener, *(server.listener for server in self.sockets.values())]
+        return sum(listener.open_connections for listener in listeners)
+
+
+def serve(instruments: Mapping[str, Instrument], light: SharedLight) -> Served:
+    """Listen for every role on both transports."""
+    faults = {role: Faults() for role in instruments}
+    return Served(
+        HislipServer(instruments, faults),
+        {role: RawSocketServer(instrument, faults[role]) for role, instrument in instruments.items()},
+        ControlServer(light, instruments, faults),
+    )
+
+
+def read_files(names: Mapping[str, str], near: Path) -> dict[str, InstrumentFile]:
+    """The instrument file of every role; InputError with all problems of all of them."""
+    files: dict[str, InstrumentFile] = {}
+    problems: list[Problem] = []
+    for role, name in names.items():
+        path = shipped.find("simulated_instruments", name, near)
+        document = read_instrument(path.read_text(encoding="utf-8"), str(path))
+        problems += document.problems
+        if document.value is not None:
+            files[role] = document.value
+    if problems:
+        raise InputError("The simulated bench was not started, because its files have mistakes:", tuple(problems))
+    return files
+
+
+def bench(world_path: Path, stepped: bool) -> Served:
+    names = dict.fromkeys(ROLES, "laser") | {role: role for role in ROLES if "laser" not in role}
+    names["local_oscillator"] = "laser"
+    serials = dict(zip(ROLES, ("SL", "LO", "AT", "PM", "PS", "OS", "RX"), strict=True))
+    files = read_files(names, world_path)
+    instruments, light = build(
+        files, {role: f"OWL-{serials[role]}-0001" for role in ROLES}, StandIn(), BenchTime(stepped)
+    )
+    return serve(instruments, light)
+
+
+def main(arguments: list[str]) -> int:
+    """`WORLD.toml [--stepped | --wall]`; the exit status is that of the error's class."""
+    paths = [argument for argument in arguments if not argument.startswith("--")]
+    if len(paths) != 1 or set(arguments) - {*paths, "--stepped", "--wall"}:
+        print("python -m owlight.simulation WORLD.toml [--stepped | --wall]", file=sys.stderr)
+        return 2
+    try:
+        served = bench(Path(paths[0]), "--stepped" in arguments)
+    except OwlightError as error:
+        print(error, file=sys.stderr)
+        return error.exit_status
+    print(json.dumps(served.announcement()), flush=True)
+    _serve_until_unneeded(served)
+    return 0
+
+
+def _serve_until_unneeded(served: Served) -> None:
+    """Until SIGTERM, or until the starter has closed our standard input and no session was open for a while."""
+    stop, orphaned = threading.Event(), threading.Event()
+    for number in (signal.SIGTERM, signal.SIGINT):
+        signal.signal(number, lambda *_: stop.set())
+    threading.Thread(target=_watch_standard_input, args=(orphaned,), daemon=True).start()
+    unneeded_since_s: float | None = None
+    while not stop.wait(_LOOK_S):
+        now_s = time.monotonic()
+        if not orphaned.is_set() or served.open_sessions:
+            unneeded_since_s = None
+        elif unneeded_since_s is None:
+            unneeded_since_s = now_s
+        elif now_s - unneeded_since_s > _GRACE_S:
+            return
+
+
+def _watch_standard_input(orphaned: threading.Event) -> None:
+    while os.read(sys.stdin.fileno(), 4096):
+        pass
+    orphaned.set()

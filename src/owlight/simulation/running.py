@@ -1,0 +1,68 @@
+"""Start the simulated bench as a process of its own, and end it."""
+
+from __future__ import annotations
+
+import json
+import os
+import subprocess
+import sys
+import tempfile
+from pathlib import Path
+
+from owlight import shipped
+from owlight.clock import Clock, WallClock
+from owlight.errors import BenchError, InputError
+from owlight.simulation.control import Control, SteppedClock
+
+_END_S = 5.0
+
+
+class RunningSimulation:
+    """A bench that serves; `stop` ends its process, and so does closing its standard input."""
+
+    def __init__(self, process: subprocess.Popen[bytes], announcement: dict[str, object], stepped: bool) -> None:
+        self._process = process
+        self.resources: dict[str, dict[str, str]] = announcement["roles"]  # type: ignore[assignment]
+        self.control = Control(int(str(announcement["control"])))
+        self.clock: Clock = SteppedClock(self.control) if stepped else WallClock()
+
+    @property
+    def alive(self) -> bool:
+        return self._process.poll() is None
+
+    def stop(self) -> None:
+        """Ask, wait, then insist."""
+        self.control.close()
+        self._process.terminate()
+        try:
+            self._process.wait(_END_S)
+        except subprocess.TimeoutExpired:
+            self._process.kill()
+            self._process.wait()
+        for pipe in (self._process.stdin, self._process.stdout):
+            if pipe is not None:
+                pipe.close()
+
+
+def start(world_path: Path, stepped: bool = True) -> RunningSimulation:
+    """InputError with the words of the bench if its files are wrong."""
+    source = str(Path(shipped.__file__).resolve().parents[1])
+    surroundings = dict(os.environ)
+    surroundings["PYTHONPATH"] = os.pathsep.join(filter(None, (source, surroundings.get("PYTHONPATH"))))
+    words_of_child = tempfile.TemporaryFile()  # a pipe that nobody reads would stop the child one day
+    process = subprocess.Popen(
+        [sys.executable, "-m", "owlight.simulation", str(world_path), "--stepped" if stepped else "--wall"],
+        stdin=subprocess.PIPE,
+        stdout=subprocess.PIPE,
+        stderr=words_of_child,
+        env=surroundings,
+        start_new_session=True,  # Ctrl-C is for the runner, which needs the bench to make it safe
+    )
+    assert process.stdout is not None
+    line = process.stdout.readline()
+    if not line:
+        status = process.wait()
+        words_of_child.seek(0)
+        words = words_of_child.read().decode(errors="replace").strip()
+        raise (InputError if status == 2 else BenchError)(words or "The simulated bench did not start.")
+    return RunningSimulation(process, json.loads(line), stepped)
