@@ -80,7 +80,10 @@ class Action:
 
 @dataclass(frozen=True)
 class Scaling:
-    """Volts of a code: asked of the instrument lane by lane, or the full range over the number of codes it spans."""
+    """Volts of a code: asked of the instrument lane by lane, or the full range over the number of codes it spans.
+
+    Without a query of the offset, code zero is zero volts.
+    """
 
     by: Literal["queries", "range"]
     volts_per_code: str = ""

@@ -30,7 +30,11 @@ def _role(driver: Driver) -> Found:
 
 
 def _coverage(driver: Driver) -> Found:
-    tables: dict[str, Mapping[str, object]] = {"setting": driver.setting, "reading": driver.reading, "action": driver.action}
+    tables: dict[str, Mapping[str, object]] = {
+        "setting": driver.setting,
+        "reading": driver.reading,
+        "action": driver.action,
+    }
     for kind, table in tables.items():
         for name in table:
             if name not in driver.terms:
@@ -130,8 +134,8 @@ def _record(driver: Driver) -> Found:
     yield from _settled(("record", "settled"), driver, record.settled, False)
     if "{channel}" not in record.fetch:
         yield ("record", "fetch"), "needs {channel}, where the number of the channel stands"
-    if record.scaling.by == "queries" and not (record.scaling.volts_per_code and record.scaling.offset):
-        yield ("record", "scaling"), "by queries needs volts_per_code and offset"
+    if record.scaling.by == "queries" and not record.scaling.volts_per_code:
+        yield ("record", "scaling"), "by queries needs volts_per_code"
     half = 1 << (8 * record.bytes_per_sample - 1)
     if not -half <= record.lowest_code < record.highest_code < half:
         yield ("record", "lowest_code"), f"and highest_code must lie within -{half} and {half - 1}"

@@ -166,9 +166,10 @@ class Instrument:
         codes = whole.view(f"{order}i{record.bytes_per_sample}")
         codes = codes.astype(np.int8 if record.bytes_per_sample == 1 else np.dtype("<i2"))
         if record.scaling.by == "queries":
-            scale = [self._ask(text.replace("{channel}", str(channel))) for text in _scaling_queries(self.driver)]
-            return LaneRecord(codes, float(scale[0]), float(scale[1]))
-        if range_v is None:
+            scaling = (record.scaling.volts_per_code, record.scaling.offset)
+            volts, offset = (float(self._ask(q.replace("{channel}", str(channel)))) if q else 0.0 for q in scaling)
+            return LaneRecord(codes, volts, offset)
+        if range_v is None or math.isnan(range_v):
             raise InstrumentError(
                 f"The range of channel {channel} of {self.role} was never set, so its codes have no volts. "
                 "Set it before the first record.",
@@ -323,8 +324,3 @@ def _words(term: Term, value: Value) -> str:
 
 def _in_words(entry: ErrorEntry) -> str:
     return f"{entry} ({hint(entry)})" if hint(entry) else str(entry)
-
-
-def _scaling_queries(driver: Driver) -> tuple[str, str]:
-    assert driver.record is not None
-    return driver.record.scaling.volts_per_code, driver.record.scaling.offset

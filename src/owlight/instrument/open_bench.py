@@ -186,7 +186,7 @@ class OpenBench:
 
     def capture(self, identifier: CaptureId, seed: int, planned_time_s: float, request: CaptureRequest) -> Capture:
         """One record of the lanes asked for; a short or silent one comes back as it is, with its hash."""
-        channel_of = {lane.name: lane.channel for lane in self.paper.receiver.lane}
+        channel_of: dict[str, int] = {lane.name: lane.channel for lane in self.paper.receiver.lane}
         channels = tuple(channel_of[name] for name in request.lanes)
         scope = self._instrument(_SAMPLE_RATE)
         ranges_v = {channel: self._range_v(channel) for channel in channels}
