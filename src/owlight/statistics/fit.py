@@ -30,6 +30,8 @@ from owlight.statistics.curve import (
 )
 
 _ROUNDS = 60
+_WHOLE_STEPS = 12
+_CENTRING_STEPS = 8
 _CLOSE = 1e-5
 """Of log a, b and tau in dB: 4e-5 dB of power, far below any interval."""
 _BOUNDED = (FLOOR, RESIDUE)
@@ -74,9 +76,9 @@ def fit(task: Task) -> Fit:
     """Fisher scoring for the curve, tau and the balance brought along; all replicates of `counts.errors` at once."""
     state = _start(task)
     converged = np.zeros(len(state.tau2), dtype=bool)
-    for _ in range(_ROUNDS):
-        here = _pooled(task, state)
-        moved = _move_parameters(task, state, here)
+    for number in range(_ROUNDS):
+        # whole steps may circle round the maximum where residuals are large; half steps then fall into it
+        moved = _move_parameters(task, state, 1.0 if number < _WHOLE_STEPS else 0.5)
         moved = np.maximum(moved, _move_imbalance(task, state))
         moved = np.maximum(moved, _move_tau(task, state, _pooled(task, state)))
         converged = moved < _CLOSE
@@ -130,8 +132,9 @@ def _information(task: Task, state: _State, here: Pooled, held: Floats) -> Float
     return np.asarray(matrix + held[:, :, None] * np.eye(4))
 
 
-def _move_parameters(task: Task, state: _State, here: Pooled) -> Floats:
-    _centre_shift(task, state, _pooled(task, state, state.shift))
+def _move_parameters(task: Task, state: _State, stride: float) -> Floats:
+    here = _pooled(task, state)
+    _centre_shift(task, state)
     score = _marginal_score(task, state)
     held = _not_free(task, len(score))
     step = _scoring_step(task, state, here, score, held)
@@ -140,7 +143,7 @@ def _move_parameters(task: Task, state: _State, here: Pooled) -> Floats:
         held[:, which] = np.where((state.parameters[:, which] <= 0.0) & (step[:, which] <= 0.0), 1.0, held[:, which])
     step = _scoring_step(task, state, here, score, held)
     before = state.parameters.copy()
-    state.parameters = _stepped(before, step)
+    state.parameters = _stepped(before, stride * step)
     return np.asarray(np.abs(state.parameters - before).max(axis=1))
 
 
@@ -170,12 +173,17 @@ def _scoring_step(task: Task, state: _State, here: Pooled, score: Floats, held: 
     return np.asarray(np.linalg.solve(information, (score * (1.0 - held))[..., None])[..., 0])
 
 
-def _centre_shift(task: Task, state: _State, at_shift: Pooled) -> None:
-    """One Newton step of each stay's shift towards its most probable value."""
-    excess, weight = _excess(task, at_shift.log_ber)
-    gradient = excess * at_shift.by_shift - state.shift / state.tau2[:, None]
-    curvature = weight * at_shift.by_shift**2 + 1.0 / state.tau2[:, None]
-    state.shift = state.shift + np.clip(gradient / curvature, -1.0, 1.0)
+def _centre_shift(task: Task, state: _State) -> None:
+    """Newton steps of each stay's shift to its most probable value, where the nodes must stand to be of use."""
+    for _ in range(_CENTRING_STEPS):
+        there = _pooled(task, state, state.shift)
+        excess, weight = _excess(task, there.log_ber)
+        gradient = excess * there.by_shift - state.shift / state.tau2[:, None]
+        curvature = weight * there.by_shift**2 + 1.0 / state.tau2[:, None]
+        step = np.clip(gradient / curvature, -1.0, 1.0)
+        state.shift = state.shift + step
+        if np.max(np.abs(step) * np.sqrt(curvature)) < 0.01:  # a hundredth of the nodes' own width
+            break
 
 
 def _excess(task: Task, log_ber: Floats) -> tuple[Floats, Floats]:

@@ -105,7 +105,9 @@ def _fitted(table: BerTable, counts: Counts, free: tuple[int, ...], threshold_be
     task = Task(table, counts, free, floor_db, _NODES)
     found = fit(task)
     if not found.converged[0]:
-        return Reason("The curve could not be fitted: the counts do not fall with power as any receiver's would.")
+        return Reason(
+            "No curve fits: the counts do not fall with power as a receiver's would. Look at the points and their findings."
+        )
     log_power, gradient, slope = crossing(table, found.parameters, found.imbalance, _shares(counts), threshold_ber)
     if not np.isfinite(log_power[0]):
         return Reason(
