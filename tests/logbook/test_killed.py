@@ -11,11 +11,16 @@ from pathlib import Path
 
 import pytest
 
+from owlight.logbook import Logbook, Provenance
+from owlight.logbook.read import open_reader, runs
+
 WRITER = """
 import importlib.util, sys
 from pathlib import Path
 spec = importlib.util.spec_from_file_location("story", sys.argv[1])
-story_module = importlib.util.module_from_spec(spec); sys.modules["story"] = story_module; spec.loader.exec_module(story_module)
+story_module = importlib.util.module_from_spec(spec)
+sys.modules["story"] = story_module
+spec.loader.exec_module(story_module)
 from owlight.logbook import Logbook
 from owlight.vocabulary.events import SegmentStarted
 plan, story = story_module.make_plan(), story_module.Story()
@@ -49,3 +54,16 @@ def test_killed_writer_loses_nothing(tmp_path: Path, seed: int) -> None:
     run = connection.execute("SELECT run FROM run").fetchone()[0]
     stored = sqlite3.connect(tmp_path / "captures" / f"{run}.db")
     assert stored.execute("SELECT count(DISTINCT attempt) FROM waveform").fetchone()[0] >= len(attempts)
+    stored.close()
+    _goes_on(tmp_path, run, len(attempts))
+
+
+def _goes_on(folder: Path, run: str, stays: int) -> None:
+    """The run is known as broken off, its orphans are dropped, and the next stay fits."""
+    with open_reader(folder) as reader:
+        assert runs.header(reader, run).state == "broken off"
+    with Logbook.open(folder) as logbook:
+        writer = logbook.continue_run(run, Provenance({"owlight": "0.1.0"}, "host", "a person", "owlight resume"))
+        writer.close()
+    stored = sqlite3.connect(folder / "captures" / f"{run}.db")
+    assert stored.execute("SELECT count(DISTINCT attempt) FROM waveform").fetchone()[0] == stays

@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+import math
+import shutil
 import sqlite3
 import subprocess
 import sys
 from collections.abc import Callable
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -16,8 +19,8 @@ from owlight.errors import InputError, StorageError
 from owlight.logbook import Logbook
 from owlight.logbook.codec import from_json, to_json
 from owlight.logbook.read import captures, curve, history, open_reader, provenance, runs
-from owlight.vocabulary.captures import CaptureId
-from owlight.vocabulary.events import AttemptFinished
+from owlight.vocabulary.captures import CaptureId, StageReport
+from owlight.vocabulary.events import AttemptFinished, Check
 from owlight.vocabulary.plan import Plan
 from owlight.vocabulary.result import Conclusion
 
@@ -78,8 +81,6 @@ def test_stays_carry_power_and_tributaries(told: Told) -> None:
 def test_failed_stay_stays_out_of_curve(
     tmp_path: Path, plan: Plan, story: Any, provenance: Any, tell_run: Callable[..., list[AttemptFinished]]
 ) -> None:
-    from dataclasses import replace
-
     with Logbook.open(tmp_path) as logbook:
         writer = logbook.start_run(plan, provenance)
         tell_run(writer, story, plan, stays=2)
@@ -144,6 +145,20 @@ def test_sealed_captures_have_their_hash(told: Told) -> None:
     assert not (folder / "captures" / f"{run}.db-wal").exists()
 
 
+def test_file_held_open_is_not_sealed(tmp_path: Path, plan: Plan, story: Any, provenance: Any) -> None:
+    with Logbook.open(tmp_path) as logbook:
+        writer = logbook.start_run(plan, provenance)
+        writer.record(story.capture(0, 1))
+        writer.record(story.stay(plan, 0, 1, errors=5))
+        held = sqlite3.connect(tmp_path / "captures" / f"{writer.run_id}.db")
+        assert held.execute("SELECT count(*) FROM waveform").fetchone()[0] == 4
+        writer.close()
+    held.close()
+    assert captures.load(tmp_path, writer.run_id, CaptureId(0, 1, 1)).lanes
+    with open_reader(tmp_path) as reader:
+        assert reader.value("SELECT captures_sha256 FROM run") is None
+
+
 def test_newest_conclusion_holds(tmp_path: Path, plan: Plan, provenance: Any) -> None:
     with Logbook.open(tmp_path) as logbook:
         writer = logbook.start_run(plan, provenance)
@@ -177,6 +192,7 @@ def test_full_disk_is_two_sentences(
         logbook._connection.execute(f"PRAGMA max_page_count = {pages}")  # what a full disk does to SQLite
         with pytest.raises(StorageError, match=r"what it held before is safe\. Free disk space"):
             tell_run(writer, story, plan, stays=400)
+        assert not (tmp_path / "reserve.bin").exists()  # freed, so that the end of the run finds room
     with open_reader(tmp_path) as reader:
         assert provenance_of(reader, writer.run_id) == plan
 
@@ -189,3 +205,78 @@ def test_numpy_scalars_are_numbers(told: Told) -> None:
     connection = sqlite3.connect(":memory:")
     for value in (np.int64(7), np.float32(0.5), np.bool_(True)):
         assert isinstance(connection.execute("SELECT ?", (value,)).fetchone()[0], int | float)
+
+
+@pytest.mark.parametrize(("keep", "left"), [("all", 4), ("doubtful", 1), ("one per point", 2), ("none", 0)])
+def test_samples_stay_as_asked(
+    tmp_path: Path, plan_keeping: Callable[[str], Plan], story: Any, provenance: Any, keep: str, left: int
+) -> None:
+    plan = plan_keeping(keep)
+    with Logbook.open(tmp_path) as logbook:
+        writer = logbook.start_run(plan, provenance)
+        for point, attempt in ((0, 1), (1, 1), (0, 2), (1, 2)):
+            writer.record(story.capture(point, attempt))
+            stay = story.stay(plan, point, attempt, errors=5)
+            if (point, attempt) == (1, 2):
+                stay = replace(stay, checks=(Check("clipping", "capture 1/2/1", 0.1, 0.01, "bad", "clipped"),))
+            writer.record(stay)
+        writer.close()
+    stored = sqlite3.connect(tmp_path / "captures" / f"{writer.run_id}.db")
+    assert stored.execute("SELECT count(DISTINCT point || '/' || attempt) FROM waveform").fetchone()[0] == left
+    logbook_rows = sqlite3.connect(tmp_path / "logbook.db")
+    assert logbook_rows.execute("SELECT sum(kept), count(*) FROM capture").fetchone() == (left, 4)
+
+
+def test_captures_of_next_stay_may_come_first(tmp_path: Path, plan: Plan, story: Any, provenance: Any) -> None:
+    with Logbook.open(tmp_path) as logbook:
+        writer = logbook.start_run(plan, provenance)
+        writer.record(story.capture(0, 1))
+        writer.record(story.capture(1, 1))
+        writer.record(story.stay(plan, 0, 1, errors=5))
+        writer.record(story.stay(plan, 1, 1, errors=5))
+        writer.close()
+    with open_reader(tmp_path) as reader:
+        assert {key[0].point for key in captures.hashes(reader, writer.run_id)} == {0, 1}
+
+
+def test_stay_without_its_capture_is_refused(tmp_path: Path, plan: Plan, story: Any, provenance: Any) -> None:
+    with Logbook.open(tmp_path) as logbook:
+        writer = logbook.start_run(plan, provenance)
+        with pytest.raises(StorageError, match="never recorded"):
+            writer.record(story.stay(plan, 0, 1, errors=5))
+
+
+def test_figures_that_are_no_number_survive(tmp_path: Path, plan: Plan, story: Any, provenance: Any) -> None:
+    stay = story.stay(plan, 0, 1, errors=5)
+    stage = StageReport("carrier phase", 0.01, {"linewidth_hz": math.nan, "margin_db": math.inf})
+    stay = replace(stay, demodulations=(replace(stay.demodulations[0], stages=(stage,)),))
+    with Logbook.open(tmp_path) as logbook:
+        writer = logbook.start_run(plan, provenance)
+        writer.record(story.capture(0, 1))
+        writer.record(stay)
+        writer.close()
+    with open_reader(tmp_path) as reader:
+        figures = history.history(reader, writer.run_id)[0].demodulations[0].stages[0].figures
+        assert reader.value("SELECT json_valid(finished_json) FROM attempt") == 1
+    assert math.isnan(figures["linewidth_hz"]) and figures["margin_db"] == math.inf
+
+
+def test_second_analysis_does_not_double_counts(told: Told) -> None:
+    folder = told[0]
+    connection = sqlite3.connect(folder / "logbook.db")
+    before = connection.execute("SELECT sum(bits) FROM ber_curve").fetchone()
+    connection.execute("INSERT INTO analysis SELECT 2, run, ?, software_id FROM analysis", ("d" * 64,))
+    for table, columns in (
+        ("demodulation", "run, point, attempt, number, status, reason, snr_db, evm_percent, gmi_bits, seconds"),
+        ("tributary", "point, attempt, number, tributary, position, bits, errors, snr_db"),
+    ):
+        connection.execute(f"INSERT INTO {table} SELECT 2, {columns} FROM {table}")
+    assert connection.execute("SELECT sum(bits) FROM ber_curve").fetchone() == before
+
+
+@pytest.mark.skipif(shutil.which("sqlite3") is None, reason="the sqlite3 command is not installed")
+def test_sqlite3_command_prints_curve(told: Told) -> None:
+    query = f"select received_power_dbm, errors, bits from ber_curve where run = '{told[1]}'"
+    command = ["sqlite3", "-readonly", str(told[0] / "logbook.db"), query]
+    printed = subprocess.run(command, capture_output=True, text=True, check=True).stdout
+    assert printed.splitlines() == ["-39.0|2003|800000", "-38.0|4003|800000"]

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import sqlite3
+from collections.abc import Iterable
 from pathlib import Path
 from typing import Any
 
@@ -26,7 +27,10 @@ class CapturesFile:
 
     def __init__(self, path: Path) -> None:
         self.path = path
-        path.parent.mkdir(parents=True, exist_ok=True)
+        with troubles(path):
+            path.parent.mkdir(parents=True, exist_ok=True)
+            if path.exists():
+                path.chmod(0o644)  # sealed by an earlier segment
         self._connection = open_captures(path)
 
     def write(self, capture: Capture) -> None:
@@ -37,23 +41,35 @@ class CapturesFile:
                 [_row(capture, position, lane) for position, lane in enumerate(capture.lanes)],
             )
 
-    def drop_unknown(self, known: set[CaptureId]) -> int:
-        """Delete captures whose attempt never reached the logbook; returns how many captures that were."""
+    def drop(self, captures: Iterable[CaptureId]) -> None:
+        keys = [(c.point, c.attempt, c.number) for c in captures]
         with troubles(self.path), transaction(self._connection):
+            self._connection.executemany("DELETE FROM waveform WHERE point = ? AND attempt = ? AND number = ?", keys)
+
+    def drop_all_but(self, known: set[CaptureId]) -> int:
+        """Delete captures whose stay never reached the logbook; returns how many captures that were."""
+        with troubles(self.path):
             rows = self._connection.execute("SELECT DISTINCT point, attempt, number FROM waveform").fetchall()
-            orphans = [tuple(row) for row in rows if CaptureId(*row) not in known]
-            self._connection.executemany("DELETE FROM waveform WHERE point = ? AND attempt = ? AND number = ?", orphans)
+        orphans = {CaptureId(*row) for row in rows} - known
+        self.drop(orphans)
         return len(orphans)
 
-    def seal(self) -> str:
-        """One plain read-only file without a log beside it; returns its SHA-256."""
+    def seal(self) -> str | None:
+        """One plain read-only file without a log beside it; returns its SHA-256.
+
+        None while somebody else has the file open: then it stays as it is, as safe, and complete with its log.
+        """
         with troubles(self.path):
             self._connection.execute("PRAGMA wal_checkpoint(TRUNCATE)")
-            self._connection.execute("PRAGMA journal_mode = DELETE")
+            try:
+                self._connection.execute("PRAGMA journal_mode = DELETE")
+            except sqlite3.OperationalError:
+                self._connection.close()
+                return None
             self._connection.close()
-        self.path.chmod(0o444)
-        with self.path.open("rb") as file:
-            return hashlib.file_digest(file, "sha256").hexdigest()
+            self.path.chmod(0o444)
+            with self.path.open("rb") as file:
+                return hashlib.file_digest(file, "sha256").hexdigest()
 
 
 def _row(capture: Capture, position: int, lane: Lane) -> tuple[object, ...]:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import dataclasses
 import functools
 import json
+import math
 import types
 import typing
 from collections.abc import Mapping
@@ -14,7 +15,7 @@ T = TypeVar("T")
 
 
 def to_json(value: Any) -> str:
-    """Keys in the order of the fields; NaN and infinity are refused, since JSON has none."""
+    """Keys in the order of the fields; NaN and infinity become the text that float() reads, since JSON has none."""
     return json.dumps(_plain(value), ensure_ascii=False, allow_nan=False)
 
 
@@ -30,7 +31,8 @@ def _plain(value: Any) -> Any:
         return [_plain(item) for item in value]
     if isinstance(value, Mapping):
         return {str(key): _plain(item) for key, item in value.items()}
-    return value.item() if hasattr(value, "item") else value
+    value = value.item() if hasattr(value, "item") else value
+    return str(value) if isinstance(value, float) and not math.isfinite(value) else value
 
 
 @functools.cache
@@ -48,6 +50,8 @@ def _rebuilt(value: Any, model: Any) -> Any:
         if len(arguments) == 2 and arguments[1] is Ellipsis:
             return tuple(_rebuilt(item, arguments[0]) for item in value)
         return tuple(_rebuilt(item, kind) for item, kind in zip(value, arguments, strict=True))
+    if origin is Mapping:
+        return {key: _rebuilt(item, arguments[1]) for key, item in value.items()}
     if origin in (typing.Union, types.UnionType):
         kinds = [kind for kind in arguments if kind is not type(None)]
         return _rebuilt(value, kinds[0]) if value is not None and len(kinds) == 1 else value

@@ -44,7 +44,12 @@ def troubles(path: Path) -> Iterator[None]:
         elif "locked" in words or "busy" in words:
             advice = "Close the program that holds the file open, then start again."
         raise StorageError(f"{path} could not be written ({words}); what it held before is safe. {advice}") from trouble
-    except sqlite3.DatabaseError as trouble:
+    except OSError as trouble:
+        raise StorageError(
+            f"{path} could not be written ({trouble.strerror}); what it held before is safe. "
+            "Look at the disk and the folder's permissions, then start again."
+        ) from trouble
+    except sqlite3.Error as trouble:
         raise StorageError(
             f"{path} refused what it was given or is damaged ({trouble}); nothing of it was changed. "
             "Copy the file before anything else, then look at it with sqlite3's integrity_check."

@@ -26,7 +26,8 @@ def sources(reader: Reader, run_id: str) -> tuple[Source, ...]:
 def identities(reader: Reader, run_id: str) -> tuple[Identity, ...]:
     """As they answered in the last segment that asked."""
     rows = reader.rows(
-        "SELECT * FROM identity WHERE run = ? AND segment = (SELECT max(segment) FROM identity WHERE run = ?) ORDER BY role",
+        "SELECT * FROM identity WHERE run = ? AND segment = (SELECT max(segment) FROM identity WHERE run = ?) "
+        "ORDER BY role",
         run_id,
         run_id,
     )

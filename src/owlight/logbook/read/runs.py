@@ -7,8 +7,8 @@ from dataclasses import dataclass
 
 from owlight.errors import InputError
 from owlight.logbook.codec import from_json
+from owlight.logbook.lock import writing_process
 from owlight.logbook.read.reader import Reader
-from owlight.logbook.store import take
 from owlight.vocabulary.events import SafeState, SafeStepOutcome
 from owlight.vocabulary.values import Stamp
 
@@ -53,6 +53,16 @@ def header(reader: Reader, run_id: str) -> RunHeader:
     return _header(reader, reader.rows("SELECT * FROM run_state WHERE run = ?", run_id)[0])
 
 
+def earlier(reader: Reader, run_id: str) -> str | None:
+    """The run before this one with the same name that came to an end and has a conclusion."""
+    found: str | None = reader.value(
+        "SELECT o.run FROM run o JOIN run r ON r.run = ? AND o.name = r.name AND o.started_utc < r.started_utc "
+        "WHERE EXISTS (SELECT 1 FROM conclusion c WHERE c.run = o.run) ORDER BY o.started_utc DESC LIMIT 1",
+        run_id,
+    )
+    return found
+
+
 def safe_state(reader: Reader, run_id: str) -> SafeState | None:
     """The last one recorded."""
     rows = reader.rows("SELECT * FROM safe_state WHERE run = ? ORDER BY count DESC LIMIT 1", run_id)
@@ -65,7 +75,7 @@ def safe_state(reader: Reader, run_id: str) -> SafeState | None:
 def _header(reader: Reader, row: sqlite3.Row) -> RunHeader:
     state, reason = row["state"], row["end_reason"]
     if not state:
-        state = "measuring" if _written_to(reader) else "broken off"
+        state = "measuring" if _alive(reader, row) else "broken off"
         reason = "" if state == "measuring" else "the process ended without closing the run"
     return RunHeader(
         run_id=row["run"],
@@ -82,10 +92,7 @@ def _header(reader: Reader, row: sqlite3.Row) -> RunHeader:
     )
 
 
-def _written_to(reader: Reader) -> bool:
-    """Whether a live process holds the writer's lock."""
-    try:
-        with (reader.folder / "logbook.lock").open("a+") as lock:
-            return not take(lock)
-    except OSError:
-        return False
+def _alive(reader: Reader, row: sqlite3.Row) -> bool:
+    """Before its first segment a run has no process of its own: then the writer that holds the lock is it."""
+    writing = writing_process(reader.folder / "logbook.lock")
+    return writing is not None and row["pid"] in {writing, None}

@@ -18,7 +18,8 @@ CREATE TABLE run (
   planned_stays INTEGER NOT NULL CHECK (planned_stays >= 0),
   plan_json TEXT NOT NULL,
   captures_file TEXT NOT NULL,
-  captures_sha256 TEXT) STRICT, WITHOUT ROWID;
+  captures_sha256 TEXT                      -- NULL until the file is sealed: somebody has it open, or the run broke off
+  ) STRICT, WITHOUT ROWID;
 CREATE INDEX run_started ON run(started_utc);
 CREATE TABLE source (                       -- which texts a run was made of
   run TEXT NOT NULL REFERENCES run ON DELETE CASCADE,
@@ -111,7 +112,8 @@ CREATE INDEX reading_run ON reading(run, role, name);
 CREATE TABLE finding (                      -- trust checks and their answers
   finding_id INTEGER PRIMARY KEY, run TEXT NOT NULL REFERENCES run ON DELETE CASCADE,
   point INTEGER, attempt INTEGER, name TEXT NOT NULL, subject TEXT NOT NULL, statistic REAL, limit_value REAL,
-  finding TEXT NOT NULL CHECK (finding IN ('ok', 'doubtful', 'bad', 'not evaluated')), words TEXT NOT NULL) STRICT;
+  finding TEXT NOT NULL CHECK (finding IN ('ok', 'doubtful', 'bad', 'not evaluated')), words TEXT NOT NULL,
+  conclusion_id INTEGER REFERENCES conclusion ON DELETE CASCADE) STRICT;   -- NULL: asked while measuring
 CREATE INDEX finding_run ON finding(run, finding);
 CREATE TABLE annotation (                   -- what a person decided about a stay: who, when, why; reversible
   annotation_id INTEGER PRIMARY KEY, run TEXT NOT NULL REFERENCES run ON DELETE CASCADE, at_utc TEXT NOT NULL,
@@ -142,34 +144,48 @@ CREATE TABLE sensitivity (
   low_dbm REAL NOT NULL, high_dbm REAL NOT NULL, coverage REAL NOT NULL,
   extrapolated INTEGER NOT NULL CHECK (extrapolated IN (0, 1)), method TEXT NOT NULL,
   PRIMARY KEY (conclusion_id, curve)) STRICT, WITHOUT ROWID;
+CREATE TABLE curve_point (                  -- the curve as it was concluded, intervals included
+  conclusion_id INTEGER NOT NULL REFERENCES conclusion ON DELETE CASCADE, run TEXT NOT NULL,
+  curve TEXT NOT NULL, point INTEGER NOT NULL, received_power_dbm REAL NOT NULL, received_power_u_db REAL NOT NULL,
+  errors INTEGER NOT NULL, bits INTEGER NOT NULL, ber REAL, ber_low REAL NOT NULL, ber_high REAL NOT NULL,
+  upper_limit INTEGER NOT NULL CHECK (upper_limit IN (0, 1)), stays INTEGER NOT NULL,
+  captures_locked INTEGER NOT NULL, captures_total INTEGER NOT NULL, fitted INTEGER NOT NULL CHECK (fitted IN (0, 1)),
+  findings TEXT NOT NULL,
+  PRIMARY KEY (conclusion_id, curve, point), CHECK (captures_locked <= captures_total),
+  CHECK ((ber IS NULL) = (errors = 0))) STRICT, WITHOUT ROWID;
 
 -- for people
-CREATE VIEW stay AS                         -- one row a stay with its counts; ber is NULL without errors or lock
+CREATE VIEW stay AS                         -- one row a stay, with what the night's own (first) analysis counted
   SELECT a.run, a.point, a.attempt, p.curve, p.reference, a.reason, a.outcome, a.count, a.started_utc, a.seconds,
     a.requested_dbm, a.received_power_dbm, a.received_power_u_db, a.tap_before_w, a.tap_after_w,
     (SELECT count(*) FROM capture c WHERE (c.run, c.point, c.attempt) = (a.run, a.point, a.attempt)) AS captures,
-    (SELECT count(*) FROM demodulation d WHERE (d.run, d.point, d.attempt) = (a.run, a.point, a.attempt)
+    (SELECT count(*) FROM demodulation d WHERE (d.analysis, d.point, d.attempt) = (n.analysis, a.point, a.attempt)
       AND d.status = 'locked') AS locked,
-    (SELECT sum(t.errors) FROM tributary t JOIN analysis n USING (analysis)
-      WHERE (n.run, t.point, t.attempt) = (a.run, a.point, a.attempt)) AS errors,
-    (SELECT sum(t.bits) FROM tributary t JOIN analysis n USING (analysis)
-      WHERE (n.run, t.point, t.attempt) = (a.run, a.point, a.attempt)) AS bits
-  FROM attempt a JOIN point p USING (run, point);
-CREATE VIEW ber_curve AS                    -- errors and bits are summed, never BERs averaged; powers averaged in watts
-  SELECT run, curve, point, round(10 * log10(avg(pow(10, received_power_dbm / 10))), 4) AS received_power_dbm,
+    (SELECT sum(t.errors) FROM tributary t WHERE (t.analysis, t.point, t.attempt) = (n.analysis, a.point, a.attempt))
+      AS errors,
+    (SELECT sum(t.bits) FROM tributary t WHERE (t.analysis, t.point, t.attempt) = (n.analysis, a.point, a.attempt))
+      AS bits
+  FROM attempt a JOIN point p USING (run, point)
+    LEFT JOIN (SELECT run, min(analysis) AS analysis FROM analysis GROUP BY run) n USING (run);
+CREATE VIEW ber_curve AS                    -- errors and bits are summed, never BERs averaged; powers averaged in watts by bits
+  SELECT run, curve, point, round(10 * log10(sum(bits * pow(10, received_power_dbm / 10)) / sum(bits)), 4)
+      AS received_power_dbm,
     count(*) AS stays, sum(errors) AS errors, sum(bits) AS bits,
     CASE WHEN sum(errors) > 0 THEN CAST(sum(errors) AS REAL) / sum(bits) END AS ber,
     CASE WHEN sum(errors) = 0 AND sum(bits) > 0 THEN 2.9957 / sum(bits) END AS ber_upper_limit_95
   FROM stay WHERE outcome = 'ok' AND NOT reference AND bits > 0
   GROUP BY run, curve, point ORDER BY run, curve, received_power_dbm;
 CREATE VIEW run_state AS                    -- '' while the last segment has no end: measuring, or broken off
-  SELECT r.run, r.name, r.simulated, r.started_utc, coalesce(s.ended_utc, '') AS ended_utc,
+  SELECT r.run, r.name, r.simulated, s.pid, r.started_utc, coalesce(s.ended_utc, '') AS ended_utc,
     coalesce(s.state, '') AS state, coalesce(s.end_reason, '') AS end_reason, r.planned_stays,
     (SELECT count(*) FROM attempt a WHERE a.run = r.run AND a.outcome = 'ok') AS stays_done,
     (SELECT count(*) FROM attempt a WHERE a.run = r.run AND a.outcome = 'failed') AS stays_failed,
     (SELECT count(*) FROM event e WHERE e.run = r.run AND e.severity IN ('fault', 'interlock')) AS faults
   FROM run r LEFT JOIN segment s ON s.run = r.run
     AND s.number = (SELECT max(number) FROM segment m WHERE m.run = r.run);
+CREATE VIEW result AS                       -- the newest conclusion's sensitivities
+  SELECT r.name, s.* FROM sensitivity s JOIN run r USING (run)
+  WHERE s.conclusion_id = (SELECT max(c.conclusion_id) FROM conclusion c WHERE c.run = s.run);
 CREATE VIEW out_of_tolerance AS
   SELECT run, at_utc, role, name, requested, read_back, unit, tolerance FROM setting WHERE NOT within;
 CREATE VIEW capture_missing AS              -- the invariant, empty in a sound logbook: a demodulation without its capture
