@@ -6,8 +6,11 @@ from pathlib import Path
 
 from owlight.bench import Bench, common_uncertainty
 from owlight.logbook.read import curve, history, open_reader
+from owlight.quantity import watts
+from owlight.run.judge import BEAT_WINDOW_HZ
 from owlight.statistics import Reason, SensitivityRequest, budget, estimate, groups, pool
-from owlight.statistics.checks import run_checks
+from owlight.statistics.checks import Evidence, run_checks
+from owlight.statistics.checks.run import summed_up
 from owlight.theory import ReceiverBelief, ber_of_snr_db, predicted_sensitivity_dbm, shot_noise_limit_dbm
 from owlight.vocabulary.events import Check, History
 from owlight.vocabulary.plan import Plan
@@ -25,8 +28,7 @@ def conclude(plan: Plan, folder: Path, run_id: str, bench: Bench) -> Conclusion:
         stays = curve.stays(reader, run_id)
         finished = history.history(reader, run_id)
     if plan.measurand is None or plan.signal is None or plan.capture is None:
-        checks = _stay_checks(finished)
-        return Conclusion((), (), (), (), checks, "The sequence takes no captures: settings and readings are logged.")
+        return Conclusion((), (), (), (), (), "The sequence takes no captures: settings and readings are logged.")
     points = pool(stays, plan.measurand.threshold_ber)
     found: list[Sensitivity] = []
     reasons: list[str] = []
@@ -40,7 +42,7 @@ def conclude(plan: Plan, folder: Path, run_id: str, bench: Bench) -> Conclusion:
         found.append(answer)
         lines = lines or budget(request, answer)
     penalties = tuple(penalty for sensitivity in found for penalty in _penalties(plan, bench, sensitivity))
-    checks = (*_stay_checks(finished), *run_checks(plan, stays, points, tuple(found)))
+    checks = _all_checks(plan, bench, finished, stays, tuple(found))
     words = " ".join(reasons) or "" if stays else "No stay gave a count."
     return Conclusion(points, tuple(found), penalties, lines, checks, words)
 
@@ -58,19 +60,31 @@ def _request(plan: Plan, bench: Bench, stays: tuple[Stay, ...]) -> SensitivityRe
     )
 
 
-def _stay_checks(finished: History) -> tuple[Check, ...]:
-    """A hundred stays that are ok are one line; whatever is not ok keeps its own."""
+def _record_checks(finished: History) -> tuple[Check, ...]:
+    """Whether the records were plausible: asked of each capture, answered once for the run."""
     every = [check for stay in finished for check in stay.checks]
-    merged: list[Check] = []
-    for name in dict.fromkeys(check.name for check in every):
-        same = [check for check in every if check.name == name]
-        well = [check for check in same if check.finding == "ok"]
-        if well:
-            worst = well[-1]
-            words = f"ok at {len(well)} of {len(same)} places where it was asked"
-            merged.append(Check(name, "run", worst.statistic if len(well) == 1 else None, worst.limit, "ok", words))
-        merged += [check for check in same if check.finding != "ok"]
-    return tuple(merged)
+    names = ("clipping", "dead lane", "duplicate capture", "record length")
+    return tuple(summed_up(name, [c for c in every if c.name == name], "captures") for name in names)
+
+
+def _all_checks(
+    plan: Plan, bench: Bench, finished: History, stays: tuple[Stay, ...], found: tuple[Sensitivity, ...]
+) -> tuple[Check, ...]:
+    assert plan.measurand is not None and plan.signal is not None
+    floor_dbm = bench.role["power_meter"].floor_dbm if "power_meter" in bench.role else None
+    evidence = Evidence(
+        points=pool(stays, plan.measurand.threshold_ber),
+        stays=stays,
+        demodulations=tuple(each for stay in finished for each in stay.demodulations),
+        sensitivities=found,
+        threshold_ber=plan.measurand.threshold_ber,
+        ber_of_snr_db=ber_of_snr_db(plan.signal.modulation),
+        meter_floor_w=None if floor_dbm is None else watts(floor_dbm),
+        beat_window_hz=BEAT_WINDOW_HZ,
+        # a setting or record that left an entry failed its stay, and the stay says which entry it was
+        error_queue=tuple(stay.reason for stay in finished if stay.outcome == "failed" and "error" in stay.reason),
+    )
+    return (*_record_checks(finished), *run_checks(evidence))
 
 
 def _penalties(plan: Plan, bench: Bench, found: Sensitivity) -> list[Penalty]:

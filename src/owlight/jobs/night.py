@@ -18,6 +18,7 @@ from owlight.jobs.resolve import Resolved
 from owlight.jobs.software import provenance
 from owlight.link import Stamper
 from owlight.logbook import Logbook, RunWriter
+from owlight.plan import longest_unattended_s
 from owlight.run.attended import AttendedClock, StopRequests
 from owlight.run.night import Night
 from owlight.run.runner import Outcome, run
@@ -71,7 +72,7 @@ def _night(
     resolved: Resolved, plan: Plan, order: Order, around: Surroundings, stop: StopRequests, writer: RunWriter
 ) -> Outcome:
     log = order.folder / "guard.jsonl"
-    guard = Guard.start(plan.safe_state, silence_s=GUARD_SILENCE_S, log=log, end_after_s=None)
+    guard = Guard.start(plan.safe_state, silence_s=GUARD_SILENCE_S, log=log, end_after_s=_longest_s(resolved))
     clock = AttendedClock(around.clock, stop, guard.beat, around.real_time)
     demodulator = Demodulator(plan.chain, clock.beat) if plan.chain is not None and plan.capture is not None else None
     stamper = Stamper(clock)
@@ -97,6 +98,10 @@ def _night(
         guard.done()
         if demodulator:
             demodulator.close(at_once=stop.level >= 2)
+
+
+def _longest_s(resolved: Resolved) -> float | None:
+    return None if resolved.sequence is None else longest_unattended_s(resolved.bench, resolved.sequence)
 
 
 def _not_opened(

@@ -28,6 +28,9 @@ def prepare(night: Night) -> None:
         night.bench.set_wavelength(float(wavelength))
     if "power_meter" in night.bench.roles:
         night.bench.zero_meter()
+    lo_laser_power = _first(plan, Term("local_oscillator", "power"))
+    if lo_laser_power is not None:
+        night.bench.set(Term("local_oscillator", "power"), lo_laser_power)
     lo_power, signal_power = _first(plan, LO_POWER), _first(plan, Term("signal_laser", "power"))
     night.bench.light_up(_number(lo_power), _number(signal_power))
     for condition in plan.conditions:

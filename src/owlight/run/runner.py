@@ -61,7 +61,9 @@ def _measure(night: Night, history: list[AttemptFinished], waiting: deque[Stay])
             history.append(finished)
             failed_in_a_row = failed_in_a_row + 1 if finished.outcome == "failed" else 0
             if failed_in_a_row >= MOST_FAILED_IN_A_ROW:
-                raise _TooManyFailuresError(f"{failed_in_a_row} stays in a row failed, the last because: {finished.reason}")
+                raise _TooManyFailuresError(
+                    f"{failed_in_a_row} stays in a row failed, the last because: {finished.reason}"
+                )
         known = (*history, *(stay.placeholder() for stay in waiting))
         attempt = next_attempt(night.plan, known)
         if attempt is None and waiting:

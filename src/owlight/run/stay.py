@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 from owlight.bench import received_power_dbm
 from owlight.capture import check_capture
-from owlight.run.judge import judge_stay
+from owlight.run.judge import judge_stay, wanted_power_dbm
 from owlight.run.night import Night
 from owlight.run.vertical import set_vertical
 from owlight.run.waiting import Waiting
@@ -43,7 +43,7 @@ class Stay:
     def finished(self, night: Night) -> AttemptFinished:
         """Wait for the demodulations and judge the stay."""
         demodulations = tuple(asked.result() for asked in self.waiting)
-        self.checks += judge_stay(self.attempt, self.received_power, demodulations, night.bench.paper)
+        self.checks += judge_stay(self.attempt, self.received_power, demodulations, night.plan, night.bench.paper)
         bad = [check for check in self.checks if check.finding == "bad" and check.subject.startswith("capture")]
         wanted = night.plan.capture is not None
         if wanted and not demodulations:
@@ -80,11 +80,11 @@ def stay_at(night: Night, stay: Stay) -> None:
     _apply_outer_settings(night, attempt)
     set_vertical(night, attempt)
     night.announce(seed, attempt.planned_time_s)
-    requested_dbm = attempt.point.value(RECEIVED_POWER)
+    requested_dbm = wanted_power_dbm(attempt)
     if requested_dbm is not None:
-        steered = night.bench.set_received_power(float(requested_dbm))
+        steered = night.bench.set_received_power(requested_dbm)
         stay.received_power = ReceivedPower(
-            requested_dbm=float(requested_dbm),
+            requested_dbm=requested_dbm,
             attenuation_set_db=steered.attenuation_set_db,
             attenuation_read_db=steered.attenuation_read_db,
             tap_before_w=None,
