@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 from pathlib import Path
+from typing import Annotated
 
 import typer
 
@@ -11,13 +12,15 @@ from owlight.cli.options import Json
 
 
 def demodulate(
-    file: Path = typer.Argument(metavar="FILE", help="Capture: .npz with `codes`, lanes x samples, integer."),
-    symbol_rate: str = typer.Option(..., help='For example "32 GBd".'),
-    sample_rate: str = typer.Option(..., help='For example "80 GS/s".'),
-    modulation: str = typer.Option("QPSK", help="Format of the symbols."),
-    polarisations: int = typer.Option(2, min=1, max=2, help="1 or 2."),
-    rolloff: float = typer.Option(0.1, min=0.0, max=1.0, help="Roll-off of the root-raised-cosine pulse."),
-    reference: str = typer.Option("15", help="Labels as .npy (polarisations x pattern length), or a pattern's order."),
+    file: Annotated[Path, typer.Argument(metavar="FILE", help="Capture: .npz with `codes`, lanes x samples, integer.")],
+    symbol_rate: Annotated[str, typer.Option(help='For example "32 GBd".')],
+    sample_rate: Annotated[str, typer.Option(help='For example "80 GS/s".')],
+    modulation: Annotated[str, typer.Option(help="Format of the symbols.")] = "QPSK",
+    polarisations: Annotated[int, typer.Option(min=1, max=2, help="1 or 2.")] = 2,
+    rolloff: Annotated[float, typer.Option(min=0.0, max=1.0, help="Roll-off of the root-raised-cosine pulse.")] = 0.1,
+    reference: Annotated[
+        str, typer.Option(help="Labels as .npy (polarisations x length), or a pattern's order.")
+    ] = "15",
     as_json: Json = False,
 ) -> None:
     """Demodulate one capture and count its errors."""

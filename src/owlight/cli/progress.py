@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import time  # noqa: TID251  only for the time left on the screen, never for the measurement
+from contextlib import suppress
 from typing import TextIO
 
 from owlight.vocabulary.events import AttemptFinished, Event, Note, SafeState, SegmentStarted
@@ -18,10 +19,9 @@ class Progress:
         self._began_s: float | None = None
 
     def say(self, words: str) -> None:
-        try:
+        # the terminal may have been closed; the run goes on and the logbook has everything
+        with suppress(OSError, ValueError):
             print(words, file=self._stream, flush=True)
-        except (OSError, ValueError):
-            pass  # the terminal was closed; the run goes on and the logbook has everything
 
     def show(self, plan: Plan, event: Event) -> None:
         if isinstance(event, SegmentStarted):

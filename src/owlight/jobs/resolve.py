@@ -54,7 +54,7 @@ class _Reading:
 
 
 def resolve(sequence_name: str | None, bench_name: str, cwd: Path | None = None) -> Resolved:
-    """Read sequence, bench, drivers and, for a simulated bench, world and instruments. InputError names every mistake."""
+    """Read sequence, bench, drivers and a simulated bench's world and instruments; InputError names every mistake."""
     reading = _Reading()
     near = (cwd or Path.cwd()) / "here"
     sequence = None
