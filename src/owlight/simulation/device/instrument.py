@@ -214,7 +214,7 @@ class Instrument:
 
     def _spelled(self, value: Plain, setting: Setting) -> str:
         if setting.file.type == "boolean":
-            return str(int(value))
+            return setting.file.choices[bool(value)] if setting.file.choices else str(int(value))
         if setting.file.type == "integer":
             before = f"{parameters.short_form(setting.file.after)}," if setting.file.after else ""
             return before + str(int(value))

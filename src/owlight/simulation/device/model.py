@@ -9,7 +9,7 @@ from owlight.errors import Problem
 from owlight.reader import Document, read
 from owlight.simulation.device.header import nodes_of
 
-Spoken = Literal["", "DBM", "W", "DB", "RATIO", "M", "NM", "HZ", "S", "V", "A", "BD"]
+Spoken = Literal["", "DBM", "W", "DB", "RATIO", "M", "NM", "HZ", "GHZ", "THZ", "S", "V", "A", "BD"]
 Kind = Literal["laser", "attenuator", "power_meter", "pattern_source", "oscilloscope", "receiver"]
 Plain = bool | int | float | str
 
@@ -56,7 +56,7 @@ class SettingFile:
     grid: float | None = None
     values: tuple[float, ...] = ()  # the only ones there are
     after: str = ""  # a word before the number, as in FORMat INTeger,8
-    choices: tuple[str, ...] = ()
+    choices: tuple[str, ...] = ()  # of a boolean: its words for off and on
     meanings: tuple[str, ...] = ()
     count: int = 1
     settles_s: float = 0.0

@@ -18,6 +18,7 @@ _MULTIPLIERS = {"EX": 1e18, "PE": 1e15, "T": 1e12, "G": 1e9, "MA": 1e6, "K": 1e3
 _MULTIPLIERS |= {"P": 1e-12, "F": 1e-15, "A": 1e-18}
 _LINEAR = ("W", "HZ", "V", "S", "M", "A", "OHM", "BD")
 _LEVELS = {"DBM": 0.0, "DBMW": 0.0, "DBW": 30.0, "DBUW": -30.0, "DBNW": -60.0}
+_SCALED = {"NM": ("M", 1e-9), "GHZ": ("HZ", 1e9), "THZ": ("HZ", 1e12)}  # spoken bare in a multiple
 _MOST_DIGITS = 255
 _LARGEST_EXPONENT = 32000
 
@@ -64,10 +65,10 @@ def _with_suffix(value: float, suffix: str, unit: str) -> float:
     if unit in ("DBM", "W") and suffix in _LEVELS:
         level_dbm = value + _LEVELS[suffix]
         return level_dbm if unit == "DBM" else 1e-3 * 10 ** (level_dbm / 10)
-    base = "W" if unit == "DBM" else unit
+    base, spoken = _SCALED.get(unit, ("W" if unit == "DBM" else unit, 1.0))
     if base not in _LINEAR or not suffix.endswith(base):
         raise DeviceError(-131, suffix)
-    factor = multiplier(suffix.removesuffix(base), base)
+    factor = multiplier(suffix.removesuffix(base), base) / spoken
     # dividing by the inverse keeps 1550.12 NM the same number as 1.55012E-6
     scaled = value * factor if factor >= 1 else value / round(1 / factor)
     if unit != "DBM":

@@ -11,6 +11,9 @@ from owlight.simulation.device.message import Parameter
 from owlight.simulation.device.model import Plain, SettingFile
 
 
+_HERTZ = {"HZ": 1.0, "GHZ": 1e9, "THZ": 1e12}
+
+
 def _tidy(value: float) -> float:
     """Without the rounding of a change of unit in the last digits."""
     return float(f"{value:.13g}")
@@ -26,8 +29,9 @@ def canonical(name: str, spoken: float, unit: str) -> float:
         return quantity.dbm(spoken)
     if unit == "M":
         return _tidy(spoken * 1e9)
-    if unit == "HZ" and name == "wavelength":
-        return quantity.wavelength_nm(spoken)
+    if unit in _HERTZ:
+        hertz = _tidy(spoken * _HERTZ[unit])
+        return quantity.wavelength_nm(hertz) if name == "wavelength" else hertz
     if unit == "RATIO":
         return _tidy(-10.0 * math.log10(spoken))
     if unit == "S" and name == "sample_rate":
@@ -45,8 +49,8 @@ def spoken(name: str, value: float, unit: str) -> float:
         return quantity.watts(value)
     if unit == "M":
         return _tidy(value / 1e9)
-    if unit == "HZ" and name == "wavelength":
-        return quantity.optical_frequency_hz(value)
+    if unit in _HERTZ:
+        return _tidy((quantity.optical_frequency_hz(value) if name == "wavelength" else value) / _HERTZ[unit])
     if unit == "RATIO":
         return _tidy(10.0 ** (-value / 10.0))
     if unit == "S" and name == "sample_rate":
@@ -105,6 +109,8 @@ class Setting:
 
     def parse(self, parameter: Parameter, suffixes: bool) -> Plain:
         """The spoken value, within the type; ranges come after."""
+        if self.file.type == "boolean" and self.file.choices:
+            return bool(self.file.choices.index(parameters.choice(parameter, self.file.choices)))
         if self.file.type == "boolean":
             return parameters.boolean(parameter)
         if self.file.type == "choice":

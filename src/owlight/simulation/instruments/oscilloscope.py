@@ -33,7 +33,7 @@ class Oscilloscope:
     def reset(self) -> None:
         """The record does not survive *RST."""
         self._lanes: tuple[bytes, ...] = ()
-        self._fresh = False
+        self._new: set[int] = set()
         self._due_s = 0.0
 
     def _busy(self) -> bool:
@@ -42,7 +42,7 @@ class Oscilloscope:
     def _arm(self) -> None:
         if self._busy():
             raise DeviceError(-213)
-        self._lanes, self._fresh = self.light.record(), True
+        self._lanes, self._new = self.light.record(), {0, 1, 2, 3}
         action = self.instrument.file.action["arm"]
         self._due_s = self.instrument.time.now_s() + action.takes_s
         self.instrument.begin(action.takes_s, MEASURING, action.opc_waits)
@@ -51,28 +51,24 @@ class Oscilloscope:
         self._due_s = 0.0
         self.instrument.end_operations(MEASURING)
 
-    def _settled_lanes(self, call: Call) -> tuple[bytes, ...]:
+    def _settled_lanes(self, call: Call, wanted: range) -> tuple[bytes, ...]:
+        """The lanes asked for; each is new once."""
         self.instrument.time.wait_until(self._due_s, call.cleared)
-        stale = not self._fresh and self.instrument.file.record.stale_is_refused
+        stale = self.instrument.file.record.stale_is_refused and not self._new.issuperset(wanted)
         if not self._lanes or stale:
             raise DeviceError(-230, "no new record")
-        return self._lanes
+        self._new -= set(wanted)
+        return tuple(self._lanes[lane] for lane in wanted)
 
     def _record(self, call: Call) -> bytes:
-        lanes = self._settled_lanes(call)
-        self._fresh = False
-        return b"".join(self._as_sent(lane) for lane in lanes)
+        return b"".join(self._as_sent(lane) for lane in self._settled_lanes(call, range(4)))
 
     def _lane(self, call: Call) -> bytes:
-        lane = self._settled_lanes(call)[call.suffix - 1]
-        self._fresh = self._fresh and call.suffix < len(self._lanes)
-        return self._as_sent(lane)
+        return self._as_sent(self._settled_lanes(call, range(call.suffix - 1, call.suffix))[0])
 
     def _bits(self) -> int:
-        return int(self.instrument.value("data_bits")) if self.instrument.has("data_bits") else self._file_bits()
-
-    def _file_bits(self) -> int:
-        return self.instrument.file.record.bits
+        own = self.instrument.file.record.bits
+        return int(self.instrument.value("data_bits")) if self.instrument.has("data_bits") else own
 
     def _as_sent(self, lane: bytes) -> bytes:
         if self._bits() == 8:
