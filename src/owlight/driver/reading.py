@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 
 from owlight.driver.conversion import CONVERTIBLE, base_of
-from owlight.driver.model import FITS, Driver, Reading, Setting, Settled, Span, difference_unit, plain
+from owlight.driver.model import FITS, Driver, Reading, Setting, Settled, Span, difference_unit, plain, quantities
 from owlight.reader import Document, nearest, read
 from owlight.reader.lines import Path
 from owlight.vocabulary.terms import ROLES, TERMS
@@ -64,6 +64,7 @@ def _settings(driver: Driver) -> Found:
             yield from _numbers(path, term, setting)
         elif setting.speaks or setting.factor != 1.0 or setting.suffix:
             yield path, "speaks, factor and suffix belong to terms that are numbers with a unit"
+        yield from _range(path, term, setting)
         yield from _words(path, term, setting)
         yield from _settled((*path, "settled"), driver, setting.settled, bool(setting.query))
         for other in setting.coupled:
@@ -83,15 +84,26 @@ def _numbers(path: Path, term: Term, setting: Setting) -> Found:
     unit = TERMS[term].unit
     if setting.tolerance is None:
         yield (*path, "tolerance"), "is missing; without it no read-back can be judged"
-    written = [("tolerance", setting.tolerance, difference_unit(unit))]
-    if isinstance(setting.range_, Span):
-        written += [("range", setting.range_.low, unit), ("range", setting.range_.high, unit)]
-    for key, text, wanted in written:
-        try:
-            if text is not None:
-                plain(text, wanted)
-        except ValueError as error:
-            yield (*path, key), str(error)
+    try:
+        if setting.tolerance is not None:
+            plain(setting.tolerance, difference_unit(unit))
+    except ValueError as error:
+        yield (*path, "tolerance"), str(error)
+
+
+def _range(path: Path, term: Term, setting: Setting) -> Found:
+    if not isinstance(setting.range_, Span):
+        return
+    if TERMS[term].type not in (int, float):
+        yield (*path, "range"), "means nothing for a word or a switch"
+        return
+    try:
+        low, high = quantities(setting.range_, TERMS[term].unit)
+    except ValueError as error:
+        yield (*path, "range"), str(error)
+        return
+    if low > high:
+        yield (*path, "range"), "ends below its beginning"
 
 
 def _words(path: Path, term: Term, setting: Setting) -> Found:
@@ -132,8 +144,6 @@ def _record(driver: Driver) -> Found:
     if "record" not in driver.terms:
         yield ("record",), f"means nothing for {driver.role}"
     yield from _settled(("record", "settled"), driver, record.settled, False)
-    if "{channel}" not in record.fetch:
-        yield ("record", "fetch"), "needs {channel}, where the number of the channel stands"
     if record.scaling.by == "queries" and not record.scaling.volts_per_code:
         yield ("record", "scaling"), "by queries needs volts_per_code"
     half = 1 << (8 * record.bytes_per_sample - 1)

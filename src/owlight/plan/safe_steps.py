@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 
 from owlight.bench import Bench, safe_settings
-from owlight.driver import Driver, program_message, query
+from owlight.driver import Driver, program_message, query, spoken_tolerance
 from owlight.driver.conversion import spoken
 from owlight.quantity import words
 from owlight.vocabulary.plan import SafeStep
@@ -20,7 +20,6 @@ def safe_steps(bench: Bench, drivers: Mapping[str, Driver], resources: Mapping[s
 
 def _step(bench: Bench, driver: Driver, resource: str, setting: Setting) -> SafeStep:
     term = setting.term
-    tolerance = driver.tolerance_of(term)
     return SafeStep(
         role=term.role,
         resource=resource,
@@ -28,7 +27,7 @@ def _step(bench: Bench, driver: Driver, resource: str, setting: Setting) -> Safe
         command=program_message(driver, term, setting.value),
         query=query(driver, term),
         expected=spoken_setting(driver, setting),
-        tolerance=None if tolerance is None else tolerance * abs(driver.setting[term.name].factor),
+        tolerance=None if isinstance(setting.value, bool | str) else spoken_tolerance(driver, term, setting.value),
         words=_words(setting),
     )
 
