@@ -15,7 +15,7 @@ _TRUE_FALSE = {True: "true", False: "false"}
 CONVERTIBLE = {
     "dBm": {"dBm", "W"},
     "W": {"W", "dBm"},
-    "dB": {"dB", "ratio"},
+    "dB": {"dB"},
     "nm": {"m", "Hz"},
     "Hz": {"Hz", "s"},
     "Bd": {"Bd", "Hz"},
@@ -63,7 +63,7 @@ def spoken(setting: Setting, term: Term, value: Value) -> str:
 def spoken_tolerance(driver: Driver, term: Term, value: float) -> float | None:
     """How far the number that the instrument answers may lie from the one it was sent, in the unit it speaks.
 
-    The smaller side counts where the unit is not linear: 0.02 dB of a transmission of 1E-6 are 5E-9.
+    The smaller side counts where the unit is not linear: 0.02 dB of a milliwatt are 4.6 microwatts.
     """
     tolerance = driver.tolerance_of(term)
     if tolerance is None:
@@ -122,8 +122,6 @@ def _to_spoken(value: float, unit: str, speaks: str) -> float:
     base, scale = base_of(speaks)
     if (unit, base) == ("dBm", "W"):
         value = quantity.watts(value)
-    elif (unit, base) == ("dB", "ratio"):
-        value = 10.0 ** (-value / 10.0)  # a transmission: more decibels, less light
     elif (unit, base) == ("nm", "Hz"):
         value = quantity.optical_frequency_hz(value)
     elif (unit, base) == ("nm", "m"):
@@ -140,8 +138,6 @@ def _from_spoken(number: float, unit: str, speaks: str) -> float | None:
         return quantity.dbm(value) if value > 0 else -math.inf
     if (unit, base) == ("W", "dBm"):
         return quantity.watts(value)
-    if (unit, base) == ("dB", "ratio"):
-        return -10.0 * math.log10(value) if value > 0 else math.inf
     if (unit, base) == ("nm", "Hz"):
         return quantity.wavelength_nm(value)
     if (unit, base) == ("nm", "m"):

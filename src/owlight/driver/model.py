@@ -14,7 +14,7 @@ from owlight.vocabulary.values import Term
 FITS: dict[str, tuple[str, ...]] = {"laser": ("signal_laser", "local_oscillator")}
 """Kinds of instrument that serve more than one role; any other kind is called as its role."""
 
-Spoken = Literal["", "dBm", "W", "mW", "dB", "ratio", "m", "nm", "Hz", "GHz", "THz", "s", "ms", "V", "A", "Bd"]
+Spoken = Literal["", "dBm", "W", "mW", "dB", "m", "nm", "Hz", "GHz", "THz", "s", "ms", "V", "A", "Bd"]
 
 
 @dataclass(frozen=True)
@@ -93,7 +93,7 @@ class Scaling:
 
 @dataclass(frozen=True)
 class Record:
-    """`{channel}` stands for the number of a channel; a fetch without it brings all `channels`, one after the other.
+    """`{channel}` stands for the number of a lane's channel.
 
     `prepare` is sent once before the first record. `lowest_code` and `highest_code` are where the converter clips.
     """
@@ -106,7 +106,6 @@ class Record:
     scaling: Scaling
     lowest_code: int
     highest_code: int
-    channels: Annotated[int, Within(1, 16)] = 4
     prepare: tuple[str, ...] = ()
     abort: str = ""
     terminator_after_block: bool = True
@@ -119,10 +118,7 @@ class Record:
 
 @dataclass(frozen=True)
 class Driver:
-    """`lacks` names what the standards demand and this instrument does not have.
-
-    `must_answer` holds queries and the answers on which this file rests, such as an offset of zero.
-    """
+    """`lacks` names what the standards demand and this instrument does not have."""
 
     driver: str
     format_version: Literal[1]
@@ -131,7 +127,6 @@ class Driver:
     lacks: tuple[Literal["*OPC?", "error queue", "status registers"], ...] = ()
     error_query: str = "SYST:ERR?"
     absent: tuple[str, ...] = ()
-    must_answer: dict[str, str] = field(default_factory=dict)
     setting: dict[str, Setting] = field(default_factory=dict)
     reading: dict[str, Reading] = field(default_factory=dict)
     action: dict[str, Action] = field(default_factory=dict)

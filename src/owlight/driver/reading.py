@@ -144,6 +144,8 @@ def _record(driver: Driver) -> Found:
     if "record" not in driver.terms:
         yield ("record",), f"means nothing for {driver.role}"
     yield from _settled(("record", "settled"), driver, record.settled, False)
+    if "{channel}" not in record.fetch:
+        yield ("record", "fetch"), "needs {channel}, where the number of the channel stands"
     if record.scaling.by == "queries" and not record.scaling.volts_per_code:
         yield ("record", "scaling"), "by queries needs volts_per_code"
     half = 1 << (8 * record.bytes_per_sample - 1)

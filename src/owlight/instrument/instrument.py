@@ -14,7 +14,7 @@ from owlight.errors import InstrumentError
 from owlight.instrument.settling import wait_settled
 from owlight.link import Link, Stamper
 from owlight.quantity import words
-from owlight.scpi import ErrorEntry, IdentityText, hint, matches, parse_number
+from owlight.scpi import ErrorEntry, IdentityText, hint
 from owlight.scpi.errors import OUT_OF_RANGE
 from owlight.vocabulary import events, values
 from owlight.vocabulary.captures import Codes
@@ -57,7 +57,6 @@ class Instrument:
         except ValueError as error:
             raise InstrumentError(f"{self.role}: {error}. Look at the address.", self.role) from None
         self._drain()
-        self._must_answer()
         return Identity(
             at=self._stamper.stamp(),
             role=self.role,
@@ -68,21 +67,6 @@ class Instrument:
             firmware=who.firmware,
             driver=self.driver.driver,
         )
-
-    def _must_answer(self) -> None:
-        """What the driver file rests on and nobody sets, such as an offset of zero."""
-        for asked, wanted in self.driver.must_answer.items():
-            answered = self._ask(asked)
-            try:
-                same = parse_number(answered) == parse_number(wanted)
-            except ValueError:
-                same = matches(wanted, answered)
-            if not same:
-                raise InstrumentError(
-                    f"{self.role} answers {asked!r} with {answered!r}, but its driver rests on {wanted!r}. "
-                    "Nothing was set; correct it at the instrument.",
-                    self.role,
-                )
 
     def set(self, term: Term, value: Value) -> Applied:
         """Command, completion, error queue, settling, read-back, comparison; the read-back is what counts from then."""
@@ -157,13 +141,10 @@ class Instrument:
             if record.abort:
                 self.link.write(record.abort, QUERY_DEADLINE_S)
             raise
-        if "{channel}" in record.fetch:
-            codes = {channel: self._fetch(record, channel, record_length) for channel in channels}
-        else:
-            together = self._fetch(record, 0, record_length * record.channels)
-            each = together.size // record.channels  # not what was asked for: a short record is a finding
-            codes = {channel: together[(channel - 1) * each : channel * each] for channel in channels}
-        lanes = tuple(self._scaled(record, channel, codes[channel], ranges_v.get(channel)) for channel in channels)
+        lanes = tuple(
+            self._scaled(record, channel, self._fetch(record, channel, record_length), ranges_v.get(channel))
+            for channel in channels
+        )
         entries = self._drain()
         if entries:
             raise InstrumentError(
