@@ -106,7 +106,7 @@ def _fitted(table: BerTable, counts: Counts, free: tuple[int, ...], threshold_be
     found = fit(task)
     if not found.converged[0]:
         return Reason(
-            "No curve fits: the counts do not fall with power as a receiver's would. Look at the points and their findings."
+            "No curve fits: the counts do not fall with power as a receiver's would. Look at the points' findings."
         )
     log_power, gradient, slope = crossing(table, found.parameters, found.imbalance, _shares(counts), threshold_ber)
     if not np.isfinite(log_power[0]):
