@@ -22,7 +22,7 @@ class Settled:
     """How an instrument shows that a change is over.
 
     "opc": `*OPC?` answers only then. "condition": `bit` of the register that `query` answers has fallen. "stable": two
-    read-backs in a row lie within the tolerance of each other. "wait": nothing shows it, so `wait` is waited.
+    read-backs in a row lie within the tolerance of what was asked. "wait": nothing shows it, so `wait` is waited.
     """
 
     by: Literal["opc", "condition", "stable", "wait"]

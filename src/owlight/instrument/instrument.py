@@ -4,14 +4,14 @@ from __future__ import annotations
 
 import math
 import statistics
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 
 from owlight.clock import Clock
-from owlight.driver import Action, Driver, Record, Setting, Settled, program_message, query, value_of
+from owlight.driver import Action, Driver, Record, Setting, program_message, query, value_of
 from owlight.errors import InstrumentError
-from owlight.instrument.settling import wait_settled
+from owlight.instrument.settling import wait_arrived, wait_settled
 from owlight.link import Link, Stamper
 from owlight.quantity import words
 from owlight.scpi import ErrorEntry, IdentityText, hint
@@ -79,7 +79,7 @@ class Instrument:
         entries = self._tell(message, max(QUERY_DEADLINE_S, setting.settled.at_most_s))
         if entries:
             raise self._refused(term, value, "; ".join(map(_in_words, entries)), entries)
-        self._settle(term, setting)
+        self._settle(term, setting, value)
         applied = self._compared(term, value, self._read_back(term), self._clock.monotonic_s() - began_s)
         self._emit(applied)
         if not applied.within:
@@ -122,7 +122,7 @@ class Instrument:
         entries = self._tell(action.command, action.settled.at_most_s)
         if entries:
             raise self._refused(term, "", "; ".join(map(_in_words, entries)))
-        wait_settled(self.role, action.settled, self._ask, self._clock, lambda old, new: old == new)
+        wait_settled(self.role, action.settled, self._ask, self._clock)
 
     def record(
         self, channels: tuple[int, ...], record_length: int, ranges_v: dict[int, float]
@@ -136,7 +136,7 @@ class Instrument:
             self._prepared = True
         self._arm(record)
         try:
-            wait_settled(self.role, record.settled, self._ask, self._clock, lambda old, new: old == new)
+            wait_settled(self.role, record.settled, self._ask, self._clock)
         except InstrumentError:
             if record.abort:
                 self.link.write(record.abort, QUERY_DEADLINE_S)
@@ -226,17 +226,17 @@ class Instrument:
             entries.append(entry)
         raise InstrumentError(f"The error queue of {self.role} has no end. Look at the instrument.", self.role)
 
-    def _settle(self, term: Term, setting: Setting) -> None:
-        settled: Settled = setting.settled
-        if settled.by == "stable":
-            settled = replace(settled, query=setting.query)
+    def _settle(self, term: Term, setting: Setting, value: Value) -> None:
         tolerance = self.driver.tolerance_of(term)
 
-        def alike(old: str, new: str) -> bool:
-            before, now = (value_of(self.driver, term, text) for text in (old, new))
-            return before is not None and now is not None and _near(before, now, tolerance)
+        def there() -> bool:
+            found = self._read_back(term)
+            return found is not None and _near(value, found, tolerance)
 
-        wait_settled(self.role, settled, self._ask, self._clock, alike)
+        if setting.settled.by == "stable":
+            wait_arrived(setting.settled, there, self._clock)
+        else:
+            wait_settled(self.role, setting.settled, self._ask, self._clock)
 
     def _read_back(self, term: Term) -> Value | None:
         return self._understood(term, self._ask(query(self.driver, term)))

@@ -12,35 +12,38 @@ from owlight.scpi.status import has_bit
 Ask = Callable[[str], str]
 
 
-def wait_settled(role: str, settled: Settled, ask: Ask, clock: Clock, alike: Callable[[str, str], bool]) -> None:
-    """`alike` says whether two answers to `settled.query` lie within the tolerance of each other ("stable" only)."""
+def wait_settled(role: str, settled: Settled, ask: Ask, clock: Clock) -> None:
+    """By a condition or by waiting; `*OPC?` has been answered before."""
     if settled.by == "wait":
         clock.sleep(settled.wait_s)
     elif settled.by == "condition":
-        _poll(role, settled, clock, lambda: not has_bit(ask(settled.query), settled.bit))
-    elif settled.by == "stable":
-        seen = [ask(settled.query)]
-
-        def stands_still() -> bool:
-            seen.append(ask(settled.query))
-            return alike(seen[-2], seen[-1])
-
-        clock.sleep(settled.every_s)
-        _poll(role, settled, clock, stands_still)
+        if not _poll(settled, clock, lambda: not has_bit(ask(settled.query), settled.bit)):
+            raise InstrumentError(
+                f"{role} did not settle within {settled.at_most_s:g} s ({settled.query}). "
+                "Nothing is measured on it; look at the instrument, or allow more time in its driver file.",
+                role,
+            )
 
 
-def _poll(role: str, settled: Settled, clock: Clock, over: Callable[[], bool]) -> None:
+def wait_arrived(settled: Settled, there: Callable[[], bool], clock: Clock) -> None:
+    """Until two read-backs in a row are where they should be. It never fails: what was reached is compared next."""
+    in_a_row = [False]
+
+    def stands_there() -> bool:
+        in_a_row.append(there())
+        return in_a_row[-1] and in_a_row[-2]
+
+    _poll(settled, clock, stands_there)
+
+
+def _poll(settled: Settled, clock: Clock, over: Callable[[], bool]) -> bool:
     """Bounded by bench time and by a count, so that a clock that stands still cannot make it endless."""
     most = 2 + round(settled.at_most_s / settled.every_s)
     end_s = clock.monotonic_s() + settled.at_most_s
     for _ in range(most):
         if over():
-            return
+            return True
         if clock.monotonic_s() >= end_s:
             break
         clock.sleep(settled.every_s)
-    raise InstrumentError(
-        f"{role} did not settle within {settled.at_most_s:g} s ({settled.query}). "
-        "Nothing is measured on it; look at the instrument, or allow more time in its driver file.",
-        role,
-    )
+    return False
