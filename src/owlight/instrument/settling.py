@@ -16,13 +16,13 @@ def wait_settled(role: str, settled: Settled, ask: Ask, clock: Clock) -> None:
     """By a condition or by waiting; `*OPC?` has been answered before."""
     if settled.by == "wait":
         clock.sleep(settled.wait_s)
-    elif settled.by == "condition":
-        if not _poll(settled, clock, lambda: not has_bit(ask(settled.query), settled.bit)):
-            raise InstrumentError(
-                f"{role} did not settle within {settled.at_most_s:g} s ({settled.query}). "
-                "Nothing is measured on it; look at the instrument, or allow more time in its driver file.",
-                role,
-            )
+        return
+    if settled.by == "condition" and not _poll(settled, clock, lambda: not has_bit(ask(settled.query), settled.bit)):
+        raise InstrumentError(
+            f"{role} did not settle within {settled.at_most_s:g} s ({settled.query}). "
+            "Nothing is measured on it; look at the instrument, or allow more time in its driver file.",
+            role,
+        )
 
 
 def wait_arrived(settled: Settled, there: Callable[[], bool], clock: Clock) -> None:
