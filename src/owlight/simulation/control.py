@@ -69,7 +69,7 @@ class SteppedClock:
 
     def __init__(self, control: Control, began: datetime | None = None) -> None:
         self._control = control
-        self._began = began or datetime.now(UTC)  # noqa: TID251
+        self._began = began or datetime.now(UTC)
 
     def utc(self) -> str:
         return iso_utc(self._began + timedelta(seconds=self._control.now_s()))

@@ -13,7 +13,8 @@ from owlight.simulation.device.bench_time import BenchTime
 from owlight.simulation.device.instrument import Instrument
 from owlight.simulation.device.model import Plain
 from owlight.simulation.device.status import HARDWARE_FAULT
-from owlight.simulation.physics import LightSettings, Physics
+from owlight.simulation.optics import LightSettings
+from owlight.simulation.physics import Physics
 from owlight.vocabulary.seeds import seed_for
 
 _STEPS_OF_A_MOVE = 4

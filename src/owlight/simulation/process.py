@@ -19,11 +19,12 @@ from owlight.simulation.device.instrument import Instrument
 from owlight.simulation.device.model import InstrumentFile, read_instrument
 from owlight.simulation.instruments.build import build
 from owlight.simulation.light import SharedLight
-from owlight.simulation.physics import StandIn
+from owlight.simulation.physics import WorldPhysics
 from owlight.simulation.servers.control import ControlServer
 from owlight.simulation.servers.faults import Faults
 from owlight.simulation.servers.hislip import HislipServer
 from owlight.simulation.servers.raw_socket import RawSocketServer
+from owlight.simulation.world import read_world
 from owlight.vocabulary.terms import ROLES
 
 _GRACE_S = 5.0  # a guard may still open links after its runner died
@@ -77,13 +78,13 @@ def read_files(names: Mapping[str, str], near: Path) -> dict[str, InstrumentFile
 
 
 def bench(world_path: Path, stepped: bool) -> Served:
-    names = dict.fromkeys(ROLES, "laser") | {role: role for role in ROLES if "laser" not in role}
-    names["local_oscillator"] = "laser"
-    serials = dict(zip(ROLES, ("SL", "LO", "AT", "PM", "PS", "OS", "RX"), strict=True))
-    files = read_files(names, world_path)
-    instruments, light = build(
-        files, {role: f"OWL-{serials[role]}-0001" for role in ROLES}, StandIn(), BenchTime(stepped)
-    )
+    """The world of the file, served; InputError if it or an instrument's file is wrong."""
+    document = read_world(world_path.read_text(encoding="utf-8"), str(world_path))
+    if document.problems or document.value is None:
+        raise InputError("The simulated bench was not started, because its world has mistakes:", document.problems)
+    world = document.value
+    files = read_files({role: world.instruments[role] for role in ROLES}, world_path)
+    instruments, light = build(files, world.serial_numbers, WorldPhysics(world), BenchTime(stepped))
     return serve(instruments, light)
 
 
@@ -95,6 +96,9 @@ def main(arguments: list[str]) -> int:
         return 2
     try:
         served = bench(Path(paths[0]), "--stepped" in arguments)
+    except OSError as error:
+        print(f"The world file cannot be read: {error}.", file=sys.stderr)
+        return InputError.exit_status
     except OwlightError as error:
         print(error, file=sys.stderr)
         return error.exit_status

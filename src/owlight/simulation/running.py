@@ -49,20 +49,20 @@ def start(world_path: Path, stepped: bool = True) -> RunningSimulation:
     source = str(Path(shipped.__file__).resolve().parents[1])
     surroundings = dict(os.environ)
     surroundings["PYTHONPATH"] = os.pathsep.join(filter(None, (source, surroundings.get("PYTHONPATH"))))
-    words_of_child = tempfile.TemporaryFile()  # a pipe that nobody reads would stop the child one day
-    process = subprocess.Popen(
-        [sys.executable, "-m", "owlight.simulation", str(world_path), "--stepped" if stepped else "--wall"],
-        stdin=subprocess.PIPE,
-        stdout=subprocess.PIPE,
-        stderr=words_of_child,
-        env=surroundings,
-        start_new_session=True,  # Ctrl-C is for the runner, which needs the bench to make it safe
-    )
-    assert process.stdout is not None
-    line = process.stdout.readline()
-    if not line:
-        status = process.wait()
-        words_of_child.seek(0)
-        words = words_of_child.read().decode(errors="replace").strip()
-        raise (InputError if status == 2 else BenchError)(words or "The simulated bench did not start.")
+    mode = "--stepped" if stepped else "--wall"
+    with tempfile.TemporaryFile() as words:  # a pipe that nobody reads would stop the child one day
+        process = subprocess.Popen(
+            [sys.executable, "-m", "owlight.simulation", str(world_path), mode],
+            stdin=subprocess.PIPE,
+            stdout=subprocess.PIPE,
+            stderr=words,
+            env=surroundings,
+            start_new_session=True,  # Ctrl-C is for the runner, which needs the bench to make it safe
+        )
+        assert process.stdout is not None
+        line = process.stdout.readline()
+        if not line:
+            kind = InputError if process.wait() == InputError.exit_status else BenchError
+            words.seek(0)
+            raise kind(words.read().decode(errors="replace").strip() or "The simulated bench did not start.")
     return RunningSimulation(process, json.loads(line), stepped)

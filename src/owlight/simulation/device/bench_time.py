@@ -9,7 +9,7 @@ from collections.abc import Callable
 _SLICE_S = 0.05
 
 
-class Cleared(Exception):
+class Cleared(Exception):  # noqa: N818  it is no error
     """A device clear ended what was going on."""
 
 

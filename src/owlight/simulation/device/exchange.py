@@ -20,11 +20,10 @@ class Exchange:
     def write(self, data: bytes, end: bool = False) -> list[bytes]:
         """The response messages to what arrived; `end` is END on the last byte, which a raw socket has not."""
         self._input += data.decode("latin-1")
-        if end and not self._input.endswith("\n"):
-            self._input += "\n"
         messages, self._input = split(self._input)
-        if end:
-            self._input = ""  # a block that promised more than it brought is over, too
+        if end and self._input:  # END ends a message without NL, and one whose block promised more than it brought
+            messages.append(self._input)
+            self._input = ""
         with self.instrument.time.lock:
             responses = [self._respond(message) for message in messages]
         return [response for response in responses if response]

@@ -1,4 +1,4 @@
-"""The command tree: patterns such as `[SOURce]:POWer[:LEVel]` and what a sent header means (SCPI-99 volume 1, ch. 6)."""
+"""The command tree: patterns such as `[SOURce]:POWer[:LEVel]`, and what a sent header means (SCPI-99 vol. 1, ch. 6)."""
 
 from __future__ import annotations
 

@@ -26,7 +26,7 @@ class Behaviour(Protocol):
     readings: dict[str, Callable[[Call], Value]]
     actions: dict[str, Callable[[], None]]
 
-    def reset(self) -> None: ...
+    def reset(self, power_up: bool) -> None: ...
 
 
 class _Nothing:
@@ -36,7 +36,7 @@ class _Nothing:
         self.readings: dict[str, Callable[[Call], Value]] = {}
         self.actions: dict[str, Callable[[], None]] = {}
 
-    def reset(self) -> None:
+    def reset(self, power_up: bool) -> None:
         """Nothing beyond the settings."""
 
 
@@ -72,7 +72,7 @@ class Instrument:
                 self.settings[name, number] = Setting(name, item)
         self._operations: list[_Operation] = []
         self.opc_asked = False
-        self.behaviour.reset()
+        self.behaviour.reset(power_up=True)
 
     def behave(self, behaviour: Behaviour) -> None:
         """Add the readings and actions of the file; ValueError if this kind has none of that name."""
@@ -162,16 +162,13 @@ class Instrument:
         for (name, number), setting in self.settings.items():
             if setting.target != setting.meant(setting.file.reset):
                 self._move(name, number, setting.file.reset)
-        self.behaviour.reset()
+        self.behaviour.reset(power_up=False)
         self.after_change()
 
     def _move(self, name: str, number: int, plain: Plain) -> None:
         setting = self.settings[name, number]
-        setting.move(plain, self._offset(setting), self.time.now_s())
+        setting.move(plain, self.time.now_s())
         self.begin(setting.file.settles_s, SETTLING, setting.file.opc_waits)
-
-    def _offset(self, setting: Setting) -> float:
-        return float(self.value(setting.file.less)) if setting.file.less else 0.0
 
     def _add_settings(self) -> None:
         for name, item in self.file.setting.items():
@@ -203,7 +200,7 @@ class Instrument:
             setting = self._numbered(name, call.suffix)
             if call.parameters:
                 return self._spelled(setting.limit(only(call.parameters).text), setting)
-            return self._spelled(setting.shown(self._offset(setting), self.time.now_s()), setting)
+            return self._spelled(setting.shown(self.time.now_s()), setting)
 
         return run
 

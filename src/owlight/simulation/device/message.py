@@ -194,8 +194,8 @@ def split(buffer: str) -> tuple[list[str], str]:
         elif character in "\"'":
             closing = buffer.find(character, at + 1)
             line_end = buffer.find("\n", at + 1)
-            # an unclosed string must not swallow the rest of the session
-            at = closing + 1 if 0 <= closing and not 0 <= line_end < closing else at + 1
+            line_end_before = line_end >= 0 and line_end < closing  # an unclosed string must not swallow the session
+            at = closing + 1 if closing >= 0 and not line_end_before else at + 1
         elif character == "#" and buffer[at + 1 : at + 2] in "123456789" and len(buffer) > at + 1:
             _, end = block_span(buffer, at)
             if end is None and _may_grow(buffer, at):

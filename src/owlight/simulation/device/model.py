@@ -9,7 +9,7 @@ from owlight.errors import Problem
 from owlight.reader import Document, read
 from owlight.simulation.device.header import nodes_of
 
-Spoken = Literal["", "DBM", "W", "DB", "RATIO", "M", "NM", "HZ", "GHZ", "THZ", "S", "V", "A", "BD"]
+Spoken = Literal["", "DBM", "W", "DB", "M", "NM", "HZ", "GHZ", "THZ", "S", "V", "A", "BD"]
 Kind = Literal["laser", "attenuator", "power_meter", "pattern_source", "oscilloscope", "receiver"]
 Plain = bool | int | float | str
 
@@ -48,7 +48,6 @@ class SettingFile:
     type: Literal["number", "integer", "boolean", "choice"] = "number"
     unit: Spoken = ""
     per: float = 1.0  # the term is this many times what is spoken: 8 for volts a division of eight
-    less: str = ""  # another setting that is taken off what is spoken: an offset
     lowest: float | None = None
     highest: float | None = None
     reset: Plain = 0
@@ -84,7 +83,6 @@ class ActionFile:
 class RecordFile:
     """How an oscilloscope hands out its record."""
 
-    bits: Literal[8, 16] = 8  # unless there is a setting data_bits
     byte_order: Literal["big", "little"] = "big"  # unless there is a setting byte_order
     stale_is_refused: bool = False  # false: a fetch without a new record repeats the old one
 
@@ -124,6 +122,4 @@ def _problems(document: Document[InstrumentFile], value: InstrumentFile) -> list
     for name, item in value.setting.items():
         if item.type == "choice" and not item.choices:
             found.append(document.problem(("setting", name), "a choice needs choices = [ ... ]"))
-        if item.less and item.less not in value.setting:
-            found.append(document.problem(("setting", name, "less"), f"there is no setting {item.less!r}"))
     return found

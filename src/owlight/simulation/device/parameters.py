@@ -46,8 +46,8 @@ def in_unit(parameter: Parameter, unit: str, suffixes: bool) -> float:
 
     >>> in_unit(Parameter("number", "2", "MW"), "W", True), in_unit(Parameter("number", "2", "MAW"), "W", True)
     (0.002, 2000000.0)
-    >>> in_unit(Parameter("number", "2", "MHZ"), "HZ", True), round(in_unit(Parameter("number", "2", "MW"), "DBM", True), 4)
-    (2000000.0, 3.0103)
+    >>> in_unit(Parameter("number", "2", "MHZ"), "HZ", True), in_unit(Parameter("number", "1", "MW"), "DBM", True)
+    (2000000.0, 0.0)
     """
     value = _mantissa(parameter)
     if not parameter.suffix:

@@ -10,7 +10,6 @@ from owlight.simulation.device.errors import DeviceError
 from owlight.simulation.device.message import Parameter
 from owlight.simulation.device.model import Plain, SettingFile
 
-
 _HERTZ = {"HZ": 1.0, "GHZ": 1e9, "THZ": 1e12}
 
 
@@ -22,8 +21,8 @@ def _tidy(value: float) -> float:
 def canonical(name: str, spoken: float, unit: str) -> float:
     """What the optics count in: dBm, nm, dB, Hz.
 
-    >>> canonical("power", 0.001, "W"), canonical("wavelength", 1.55012e-6, "M"), canonical("attenuation", 0.01, "RATIO")
-    (0.0, 1550.12, 20.0)
+    >>> canonical("power", 0.001, "W"), canonical("wavelength", 1.55012e-6, "M")
+    (0.0, 1550.12)
     """
     if unit == "W" and name == "power":
         return quantity.dbm(spoken)
@@ -32,8 +31,6 @@ def canonical(name: str, spoken: float, unit: str) -> float:
     if unit in _HERTZ:
         hertz = _tidy(spoken * _HERTZ[unit])
         return quantity.wavelength_nm(hertz) if name == "wavelength" else hertz
-    if unit == "RATIO":
-        return _tidy(-10.0 * math.log10(spoken))
     if unit == "S" and name == "sample_rate":
         return _tidy(1.0 / spoken)
     return spoken
@@ -42,8 +39,8 @@ def canonical(name: str, spoken: float, unit: str) -> float:
 def spoken(name: str, value: float, unit: str) -> float:
     """The inverse of `canonical`.
 
-    >>> spoken("power", 0.0, "W"), spoken("wavelength", 1550.12, "M"), spoken("attenuation", 20.0, "RATIO")
-    (0.001, 1.55012e-06, 0.01)
+    >>> spoken("power", 0.0, "W"), spoken("wavelength", 1550.12, "M")
+    (0.001, 1.55012e-06)
     """
     if unit == "W" and name == "power":
         return quantity.watts(value)
@@ -51,8 +48,6 @@ def spoken(name: str, value: float, unit: str) -> float:
         return _tidy(value / 1e9)
     if unit in _HERTZ:
         return _tidy((quantity.optical_frequency_hz(value) if name == "wavelength" else value) / _HERTZ[unit])
-    if unit == "RATIO":
-        return _tidy(10.0 ** (-value / 10.0))
     if unit == "S" and name == "sample_rate":
         return _tidy(1.0 / value)
     return value
@@ -70,12 +65,12 @@ class Setting:
         self.until_s = -math.inf
         self.jump(file.reset if file.power_up is None else file.power_up)
 
-    def jump(self, plain: Plain, offset: float = 0.0) -> None:
+    def jump(self, plain: Plain) -> None:
         """To a value as the file has it, at once: that is how the power-up state is found."""
-        self._from = self._to = self.meant(plain, offset)
+        self._from = self._to = self.meant(plain)
         self.until_s = -math.inf
 
-    def meant(self, plain: Plain, offset: float = 0.0) -> Plain:
+    def meant(self, plain: Plain) -> Plain:
         """A spoken value in the optics' terms."""
         if self.file.type == "choice":
             place = self.file.choices.index(str(plain))
@@ -84,11 +79,11 @@ class Setting:
             return bool(plain)
         if self.file.type == "integer":
             return int(plain)
-        return canonical(self.name, float(plain) * self.file.per - offset, self.file.unit)
+        return canonical(self.name, float(plain) * self.file.per, self.file.unit)
 
-    def move(self, plain: Plain, offset: float, now_s: float) -> None:
+    def move(self, plain: Plain, now_s: float) -> None:
         """Start towards a spoken value; the light is there after `settles`."""
-        self._from, self._to = self.at(now_s), self.meant(plain, offset)
+        self._from, self._to = self.at(now_s), self.meant(plain)
         self._began_s = now_s
         self.until_s = now_s + self.file.settles_s
 
@@ -152,7 +147,7 @@ class Setting:
             clipped = _tidy(round(clipped / self.file.grid) * self.file.grid)
         return (int(clipped) if self.file.type == "integer" else clipped), clipped != value
 
-    def shown(self, offset: float, now_s: float) -> Plain:
+    def shown(self, now_s: float) -> Plain:
         """The value as it is read back."""
         value = self.at(now_s) if self.file.reads_back == "actual" else self._to
         if self.file.type == "choice":
@@ -160,4 +155,4 @@ class Setting:
             return self.file.choices[place] if self.file.meanings else str(value)
         if self.file.type != "number":
             return value
-        return (spoken(self.name, float(value), self.file.unit) + offset) / self.file.per
+        return spoken(self.name, float(value), self.file.unit) / self.file.per

@@ -22,15 +22,14 @@ class Oscilloscope:
         self.instrument = instrument
         self.light = light
         self.readings: dict[str, Callable[[Call], Value]] = {
-            "record": self._record,
             "lane": self._lane,
             "increment": self._increment,
             "busy": lambda _: int(self._busy()),
         }
         self.actions: dict[str, Callable[[], None]] = {"arm": self._arm, "abort": self._abort}
-        self.reset()
+        self.reset(power_up=True)
 
-    def reset(self) -> None:
+    def reset(self, power_up: bool) -> None:
         """The record does not survive *RST."""
         self._lanes: tuple[bytes, ...] = ()
         self._new: set[int] = set()
@@ -42,7 +41,7 @@ class Oscilloscope:
     def _arm(self) -> None:
         if self._busy():
             raise DeviceError(-213)
-        self._lanes, self._new = self.light.record(), {0, 1, 2, 3}
+        self._lanes, self._new = self.light.record(), {1, 2, 3, 4}
         action = self.instrument.file.action["arm"]
         self._due_s = self.instrument.time.now_s() + action.takes_s
         self.instrument.begin(action.takes_s, MEASURING, action.opc_waits)
@@ -51,24 +50,17 @@ class Oscilloscope:
         self._due_s = 0.0
         self.instrument.end_operations(MEASURING)
 
-    def _settled_lanes(self, call: Call, wanted: range) -> tuple[bytes, ...]:
-        """The lanes asked for; each is new once."""
+    def _lane(self, call: Call) -> bytes:
+        """Each lane of a record is new once."""
         self.instrument.time.wait_until(self._due_s, call.cleared)
-        stale = self.instrument.file.record.stale_is_refused and not self._new.issuperset(wanted)
+        stale = self.instrument.file.record.stale_is_refused and call.suffix not in self._new
         if not self._lanes or stale:
             raise DeviceError(-230, "no new record")
-        self._new -= set(wanted)
-        return tuple(self._lanes[lane] for lane in wanted)
-
-    def _record(self, call: Call) -> bytes:
-        return b"".join(self._as_sent(lane) for lane in self._settled_lanes(call, range(4)))
-
-    def _lane(self, call: Call) -> bytes:
-        return self._as_sent(self._settled_lanes(call, range(call.suffix - 1, call.suffix))[0])
+        self._new.discard(call.suffix)
+        return self._as_sent(self._lanes[call.suffix - 1])
 
     def _bits(self) -> int:
-        own = self.instrument.file.record.bits
-        return int(self.instrument.value("data_bits")) if self.instrument.has("data_bits") else own
+        return int(self.instrument.value("data_bits"))
 
     def _as_sent(self, lane: bytes) -> bytes:
         if self._bits() == 8:
@@ -79,5 +71,5 @@ class Oscilloscope:
         return wide.astype(">i2" if order == "big" else "<i2").tobytes()
 
     def _increment(self, call: Call) -> float:
-        range_v = float(self.instrument.value("range", call.suffix))
-        return range_v / _LEVELS ** (self._bits() // 8)
+        codes = float(_LEVELS ** (self._bits() // 8))
+        return float(self.instrument.value("range", call.suffix)) / codes

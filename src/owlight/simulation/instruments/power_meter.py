@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 
 from owlight.simulation.device.entry import Call
@@ -27,11 +28,12 @@ class PowerMeter:
             "abort": self._abort,
             "zero": self._zero,
         }
-        self._zero_w = 0.0
-        self.reset()
+        self.reset(power_up=True)
 
-    def reset(self) -> None:
+    def reset(self, power_up: bool) -> None:
         """A zero outlives *RST, as a calibration does."""
+        if power_up:
+            self._zero_w = 0.0
         self._result_w: float | None = None
         self._due_s: float | None = None
 
@@ -41,7 +43,8 @@ class PowerMeter:
     def _window_w(self) -> float:
         off_nm = abs(float(self.instrument.value("wavelength")) - self.light.now().signal_wavelength_nm)
         loss_db = self.instrument.file.responsivity_slope * off_nm
-        return self.light.meter_power_w(self._averaging_s()) * 10.0 ** (-loss_db / 10.0) - self._zero_w
+        seen_w = self.light.meter_power_w(self._averaging_s())
+        return seen_w * math.pow(10.0, -loss_db / 10.0) - self._zero_w
 
     def _initiate(self) -> None:
         self._finish()

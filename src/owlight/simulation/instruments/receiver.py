@@ -22,5 +22,5 @@ class Receiver:
         self.light.catch_up()
         return len(self.light.damaged)
 
-    def reset(self) -> None:
-        """*RST mends no photodiode."""
+    def reset(self, power_up: bool) -> None:
+        """Neither *RST nor the mains switch mends a photodiode."""
