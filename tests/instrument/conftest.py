@@ -6,6 +6,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 
+import numpy as np
 import pytest
 
 from owlight import shipped
@@ -14,16 +15,48 @@ from owlight.driver import Driver, read_driver
 from owlight.instrument.instrument import Instrument
 from owlight.instrument.open_bench import OpenBench, open_bench
 from owlight.link import Link, Stamper, memory_opener
+from owlight.quantity import watts
 from owlight.simulation.device.bench_time import BenchTime
 from owlight.simulation.device.exchange import Exchange
 from owlight.simulation.device.model import read_instrument
 from owlight.simulation.instruments.build import build
-from owlight.simulation.physics import StandIn
+from owlight.simulation.optics import LightSettings
 from owlight.vocabulary.events import Event
 from owlight.vocabulary.terms import ROLES
 
 Spoil = Callable[[bytes], bytes | None]
 """Program message -> its response, or None to let the instrument answer."""
+
+
+class LevelsOnly:
+    """Optics of levels alone: what arrives follows from the demo bench's nominal losses; records are 20 mV of noise.
+
+    The fields of the simulation are tested elsewhere; here they would only cost time.
+    """
+
+    def receiver_power_w(self, s: LightSettings, planned_time_s: float) -> float:
+        return watts(s.signal_power_dbm - 12 - 1.5 - s.attenuation_db - 10.1) if s.signal_on else 0.0
+
+    def meter_power_w(self, s: LightSettings, key: int, planned_time_s: float, averaging_s: float) -> float:
+        noise = np.random.default_rng(key).normal(size=2)
+        return self.receiver_power_w(s, 0.0) * 10**0.954 * (1 + 1e-4 * noise[0]) + 1e-12 * noise[1]
+
+    def diode_peak_power_w(self, s: LightSettings) -> float:
+        lo_w = watts(s.lo_power_dbm - 1) if s.lo_on else 0.0
+        return (lo_w**0.5 + self.receiver_power_w(s, 0.0) ** 0.5) ** 2 / 4
+
+    def damaged_by(self, peak_w: float) -> frozenset[str]:
+        return frozenset(("XI", "XQ", "YI", "YQ")) if peak_w > watts(9.0) else frozenset()
+
+    def photocurrent_a(self, s: LightSettings, key: int, planned_time_s: float) -> float:
+        return (self.receiver_power_w(s, 0.0) + (watts(s.lo_power_dbm - 1) if s.lo_on else 0.0)) * s.bias
+
+    def capture_codes(
+        self, s: LightSettings, key: int, planned_time_s: float, damaged: frozenset[str]
+    ) -> tuple[np.ndarray, ...]:
+        noise = np.random.default_rng(key).normal(0, 0.02, (4, s.record_length))
+        scaled = (np.clip(np.round(lane / v * 256), -128, 127) for lane, v in zip(noise, s.ranges_v, strict=True))
+        return tuple(lane.astype(np.int8) for lane in scaled)
 
 
 class StepClock:
@@ -67,7 +100,7 @@ class Joined:
             files[role] = read_instrument(path.read_text("utf-8"), str(path)).value
         self.time = BenchTime(True)
         serials = {role: self.paper.role[role].serial_number for role in ROLES}
-        self.simulated, self.truth = build(files, serials, StandIn(), self.time)
+        self.simulated, self.truth = build(files, serials, LevelsOnly(), self.time)
         self.clock = StepClock(self.time)
         self.resources = {role: f"memory {role}" for role in ROLES}
         self.opener = memory_opener({self.resources[role]: self._answer(role) for role in ROLES})

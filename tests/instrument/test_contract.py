@@ -120,7 +120,7 @@ def test_record_is_in_volts_whatever_the_dialect(name: str, join_with: Callable[
     again = instrument.record((4, 1), 20_000, ranges_v)
     for lane in lanes:
         assert lane.codes.size == 20_000
-        # the stand-in optics give 20 mV rms whatever the range; 20,000 samples know it to 0.5 % (k = 1)
+        # the optics of these tests give 20 mV rms whatever the range; 20,000 samples know it to 0.5 % (k = 1)
         assert np.std(lane.codes * lane.volts_per_code) == pytest.approx(0.02, rel=0.03)
     assert len(again) == 2 and not np.array_equal(again[1].codes, lanes[0].codes)
 

@@ -379,6 +379,6 @@ def test_tap_and_paper_agree_on_expected_power(joined, tmp_path: Path) -> None:
     with lit(joined, tmp_path) as bench:
         bench.set_received_power(-37.0)
         true_w = joined.truth.truth()["receiver_power_w"]
-        # plane_minus_tap and the stand-in's tap ratio are both 9.54 dB; the correction leaves at most 0.03 dB and noise
+        # plane_minus_tap and the tap ratio of these tests are both 9.54 dB; a correction leaves 0.03 dB and noise
         assert dbm(true_w) == pytest.approx(-37.0, abs=0.06)
         assert np.isfinite(true_w)

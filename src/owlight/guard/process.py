@@ -20,6 +20,7 @@ from owlight.vocabulary.events import Event, SafeState
 _TERMINATE_S = 6.0
 """Three steps of two seconds: what a healthy runner needs to make its own bench safe."""
 _KILL_S = 2.0
+_LOOK_S = 0.02
 _GONE = ""
 
 Lines = queue.SimpleQueue[str]
@@ -39,7 +40,7 @@ def main() -> int:
     reason = _watch(orders, lines)
     if not reason:
         return 0
-    how = _end_runner(orders.runner_pid, lines, reason)
+    how = _end_runner(orders.runner_pid, lines)
     if how == DONE:
         _append(orders, f"{reason}; it was asked to end and did so in order", None)
         return 0
@@ -80,34 +81,34 @@ def _watch(orders: Orders, lines: Lines) -> str:
             return "the runner ended without saying so"
 
 
-def _end_runner(pid: int, lines: Lines, reason: str) -> str:
+def _end_runner(pid: int, lines: Lines) -> str:
     """`DONE` if it ended in order, else how it was ended. Only our own parent is ended: a number may be used again."""
     if not _is_parent(pid):
         return "it is no longer there"
     os.kill(pid, signal.SIGTERM)
-    if _awaits_end(lines, _TERMINATE_S):
+    if _ends_in_order(pid, lines):
         return DONE
-    if _is_parent(pid):
-        os.kill(pid, getattr(signal, "SIGKILL", signal.SIGTERM))
-        end_s = time.monotonic() + _KILL_S
-        while _is_parent(pid) and time.monotonic() < end_s:
-            time.sleep(0.01)
-        return "it was ended by force"
-    return "it ended when asked, but not in order"
+    if not _is_parent(pid):
+        return "it is no longer there"
+    os.kill(pid, getattr(signal, "SIGKILL", signal.SIGTERM))
+    end_s = time.monotonic() + _KILL_S
+    while _is_parent(pid) and time.monotonic() < end_s:
+        time.sleep(_LOOK_S)
+    return "it was ended by force"
 
 
-def _awaits_end(lines: Lines, within_s: float) -> bool:
-    """Whether `done` came; the end of the pipe without it ends the wait too."""
-    end_s = time.monotonic() + within_s
-    while (left_s := end_s - time.monotonic()) > 0:
+def _ends_in_order(pid: int, lines: Lines) -> bool:
+    """Whether `done` came while it lived; a dying process closes its pipe a moment before it is gone."""
+    end_s = time.monotonic() + _TERMINATE_S
+    while _is_parent(pid) and time.monotonic() < end_s:
         try:
-            line = lines.get(timeout=left_s)
+            if lines.get(timeout=_LOOK_S) == DONE:
+                return True
         except queue.Empty:
-            return False
-        if line == DONE:
+            continue
+    while not lines.empty():
+        if lines.get() == DONE:
             return True
-        if line == _GONE:
-            return False
     return False
 
 

@@ -156,7 +156,7 @@ class Instrument:
 
     def _arm(self, record: Record) -> None:
         if record.settled.by == "opc":
-            self.link.query(f"{record.arm};*OPC?", record.settled.at_most_s)
+            self._complete(record.arm, record.settled.at_most_s)
         else:
             self.link.write(record.arm, QUERY_DEADLINE_S)
 
@@ -199,8 +199,18 @@ class Instrument:
         if "*OPC?" in self.driver.lacks:
             self.link.write(message, deadline_s)
         else:
-            self.link.query(f"{message};*OPC?", deadline_s)
+            self._complete(message, deadline_s)
         return self._drain()
+
+    def _complete(self, message: str, deadline_s: float) -> None:
+        answered = self.link.query(f"{message};*OPC?", deadline_s)
+        if answered.strip().lstrip("+") != "1":
+            self.link.close()  # if this answer belongs to another question, so will all that follow
+            raise InstrumentError(
+                f"{self.role} answers *OPC? with {answered[:80]!r} instead of 1: its answers may not belong to our "
+                f"questions. Whether it did {message!r} is unknown and the session is closed; look at the link.",
+                self.role,
+            )
 
     def _must_obey(self, messages: tuple[str, ...]) -> None:
         for message in messages:
