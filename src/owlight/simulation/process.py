@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import argparse
 import json
 import os
 import signal
@@ -28,7 +29,7 @@ from owlight.simulation.world import read_world
 from owlight.vocabulary.terms import ROLES
 
 _GRACE_S = 5.0  # a guard may still open links after its runner died
-_LOOK_S = 0.2
+_LOOK_S = 0.1
 
 
 @dataclass(frozen=True)
@@ -89,13 +90,10 @@ def bench(world_path: Path, stepped: bool) -> Served:
 
 
 def main(arguments: list[str]) -> int:
-    """`WORLD.toml [--stepped | --wall]`; the exit status is that of the error's class."""
-    paths = [argument for argument in arguments if not argument.startswith("--")]
-    if len(paths) != 1 or set(arguments) - {*paths, "--stepped", "--wall"}:
-        print("python -m owlight.simulation WORLD.toml [--stepped | --wall]", file=sys.stderr)
-        return 2
+    """Serve until nobody needs it; the exit status is that of the error's class."""
+    asked = _options().parse_args(arguments)
     try:
-        served = bench(Path(paths[0]), "--stepped" in arguments)
+        served = bench(asked.world, asked.stepped)
     except OSError as error:
         print(f"The world file cannot be read: {error}.", file=sys.stderr)
         return InputError.exit_status
@@ -103,24 +101,32 @@ def main(arguments: list[str]) -> int:
         print(error, file=sys.stderr)
         return error.exit_status
     print(json.dumps(served.announcement()), flush=True)
-    _serve_until_unneeded(served)
+    _serve_until_unneeded(served, asked.grace)
     return 0
 
 
-def _serve_until_unneeded(served: Served) -> None:
+def _options() -> argparse.ArgumentParser:
+    options = argparse.ArgumentParser("python -m owlight.simulation", description="Serve the bench of a world file.")
+    options.add_argument("world", type=Path, help="the world file")
+    mode = options.add_mutually_exclusive_group()
+    mode.add_argument("--stepped", action="store_true", help="time moves when it is told to, through the control port")
+    mode.add_argument("--wall", dest="stepped", action="store_false", help="time passes on the wall (default)")
+    words = "seconds to stay when the starter has gone and no session is open"
+    options.add_argument("--grace", type=float, default=_GRACE_S, help=words)
+    return options
+
+
+def _serve_until_unneeded(served: Served, grace_s: float) -> None:
     """Until SIGTERM, or until the starter has closed our standard input and no session was open for a while."""
     stop, orphaned = threading.Event(), threading.Event()
     for number in (signal.SIGTERM, signal.SIGINT):
         signal.signal(number, lambda *_: stop.set())
     threading.Thread(target=_watch_standard_input, args=(orphaned,), daemon=True).start()
-    unneeded_since_s: float | None = None
+    needed_s = time.monotonic()
     while not stop.wait(_LOOK_S):
-        now_s = time.monotonic()
         if not orphaned.is_set() or served.open_sessions:
-            unneeded_since_s = None
-        elif unneeded_since_s is None:
-            unneeded_since_s = now_s
-        elif now_s - unneeded_since_s > _GRACE_S:
+            needed_s = time.monotonic()
+        elif time.monotonic() - needed_s > grace_s:
             return
 
 

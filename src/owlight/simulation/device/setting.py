@@ -95,6 +95,8 @@ class Setting:
         """Where the light stands at a moment."""
         if moment_s >= self.until_s or self._to == self._from:
             return self._to
+        if moment_s < self._began_s:
+            return self._from
         if isinstance(self._to, bool):
             return False  # on comes last, off comes first
         if isinstance(self._to, str) or isinstance(self._from, str):
