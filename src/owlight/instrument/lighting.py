@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from typing import TYPE_CHECKING
 
 from owlight.errors import BenchError, InstrumentError
@@ -20,7 +21,9 @@ _WAVELENGTHS = tuple(
 )
 _DARK_OVER_FLOOR = 10.0
 """A point is refused below ten times the floor, so darkness is what no point could be taken for."""
-_ZERO_READINGS = 3
+_ZERO_READINGS = 5
+_COVERAGE = 3.0
+"""A short averaging window scatters by more than the floor; that is no zero gone wrong."""
 
 
 def light_up(bench: OpenBench, lo_power_dbm: float | None, signal_power_dbm: float | None) -> None:
@@ -83,10 +86,11 @@ def zero_meter(bench: OpenBench) -> None:
         )
     bench.act_plainly(ZERO)
     wait_averaged(bench)
-    left = bench.read(METER, _ZERO_READINGS, "dark after zero").value
-    if left is None or abs(left) > floor_w:
+    left = bench.read(METER, _ZERO_READINGS, "dark after zero")
+    scatter_w = (left.standard_deviation or 0.0) / math.sqrt(_ZERO_READINGS)
+    if left.value is None or abs(left.value) > floor_w + _COVERAGE * scatter_w:
         raise InstrumentError(
-            f"The meter still reads {_level(left)} in the dark after its zero, more than its floor. "
+            f"The meter still reads {_level(left.value)} in the dark after its zero, more than its floor. "
             "The bench stays dark; zero it by hand, or correct its floor in the bench file.",
             "power_meter",
         )
