@@ -26,7 +26,7 @@ from owlight.vocabulary.events import (
 from owlight.vocabulary.plan import Attempt, CaptureRequest, Measurand, Plan, Point, Signal, Source, StopRule
 from owlight.vocabulary.result import Conclusion, Penalty
 from owlight.vocabulary.terms import RECEIVED_POWER
-from owlight.vocabulary.values import Identity, Setting, Stamp, Term
+from owlight.vocabulary.values import Identity, Setting, Stamp
 
 ROOT = Path(__file__).resolve().parents[2]
 PLANE_MINUS_TAP_DB = -9.54
@@ -64,7 +64,8 @@ class Night:
     def capture(self, identifier: CaptureId) -> Capture:
         codes = self.rng.integers(-90, 90, (4, 64)).astype(np.int8)
         lanes = tuple(
-            Lane(n, c, 1e-3, 0.0, 0.0, hashlib.sha256(c.tobytes()).hexdigest()) for n, c in zip(LANES, codes, strict=True)
+            Lane(n, c, 1e-3, 0.0, 0.0, hashlib.sha256(c.tobytes()).hexdigest())
+            for n, c in zip(LANES, codes, strict=True)
         )
         return Capture(identifier, self.stamp(2.0), 80e9, lanes, seed=self.count)
 
@@ -98,7 +99,8 @@ class Night:
         ber = float(ber_of_snr_db("QPSK")(10 * np.log10(snr)))
         shares = {"XI": 0.95, "XQ": 0.97, "YI": 1.02, "YQ": 1.06}
         tributaries = tuple(
-            Tributary(n, 94_000, int(self.rng.binomial(94_000, ber * shares[n])), float(10 * np.log10(snr))) for n in LANES
+            Tributary(n, 94_000, int(self.rng.binomial(94_000, ber * shares[n])), float(10 * np.log10(snr)))
+            for n in LANES
         )
         figures = {"sync_peak": 0.98, "sync_second": 0.2 + 0.02 * self.rng.random()}
         if not locked:
@@ -190,7 +192,11 @@ def tell(folder: Path, seed: int, start_s: float, laser_firmware: str, troubled:
             if troubled and index == 5 and number == 3:
                 stay = replace(stay, outcome="failed", reason="the oscilloscope's record was short", demodulations=())
             writer.record(stay)
-        steps = ("attenuator", "attenuation at 60 dB"), ("signal_laser", "output off"), ("local_oscillator", "output off")
+        steps = (
+            ("attenuator", "attenuation at 60 dB"),
+            ("signal_laser", "output off"),
+            ("local_oscillator", "output off"),
+        )
         outcomes = tuple(SafeStepOutcome(role, words, "as expected", True) for role, words in steps)
         writer.record(SafeState(night.stamp(3.0), True, outcomes))
         writer.record(SegmentEnded(night.stamp(), "finished", "every planned stay was taken"))

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from owlight.report import drawing as d
+from owlight.report.answers import decimals
 from owlight.report.facts import Facts
 from owlight.report.fitted import fitted_ber
 from owlight.report.markup import Markup
@@ -114,7 +115,11 @@ def _sensitivity(found: Sensitivity, facts: Facts, frame: d.Frame, label: bool) 
         d.line(x, frame.y.start, x, y, "result"),
     ]
     if label:
-        marks.append(d.text(inside[0] - 6, frame.y.start - 8, level(found.received_power_dbm), "note strong end"))
+        marks.append(
+            d.text(
+                inside[0] - 6, frame.y.start - 8, level(found.received_power_dbm, decimals(found)), "note strong end"
+            )
+        )
     return marks
 
 

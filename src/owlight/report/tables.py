@@ -26,9 +26,10 @@ def findings(facts: Facts) -> Markup:
     open_ones = [check for check in facts.checks if check.finding == "not evaluated"]
     for words in dict.fromkeys(check.words for check in open_ones):
         same = [check for check in open_ones if check.words == words]
-        names, place = tuple(dict.fromkeys(c.name for c in same)), same[0].subject if len(same) == 1 else ""
+        names, places = tuple(dict.fromkeys(c.name for c in same)), tuple(dict.fromkeys(c.subject for c in same))
+        place = places[0] if len(places) == 1 else counted(len(places), "place")
         name, rest = (names[0], "") if len(names) == 1 else (counted(len(names), "question"), ": " + ", ".join(names))
-        rows.append((finding_word(same[0]), name, place or counted(len(same), "place"), "", "", words + rest))
+        rows.append((finding_word(same[0]), name, place, "", "", words + rest))
     well = [check for check in facts.checks if check.finding == "ok"]
     for name in dict.fromkeys(check.name for check in well):
         same = [check for check in well if check.name == name]
@@ -132,7 +133,9 @@ def budget(facts: Facts) -> Markup | None:
         words = f"total interval {100 * s.coverage:.0f} %: {number(s.low_dbm, 3)} to {level(s.high_dbm, 3)}"
         factor = f", k = {coverage_factor(s):.2f}"
         rows.append((element("b", "combined"), "", element("b", number(combined, 4)), words + factor))
-    return table(("component", "type", "standard uncertainty / dB", "in words"), rows, numeric=frozenset({2}))
+    return table(
+        ("component", "type", "standard uncertainty / dB", "in words"), rows, numeric=frozenset({2}), kind="budget"
+    )
 
 
 def penalties(facts: Facts) -> Markup | None:
@@ -163,7 +166,7 @@ def repeat(facts: Facts) -> Markup:
         rows.insert(1, ("reproduces", element("code", by["reproduces"])))
     files = [element("li", f"{s.kind} {s.name} ", element("code", s.sha256, class_="hash")) for s in facts.sources]
     words = "The texts that decided the run, kept whole in the logbook, each with its SHA-256:"
-    return together(table(("", ""), rows), element("p", words), element("ul", *files, class_="files"))
+    return together(table(("", ""), rows, kind="repeat"), element("p", words), element("ul", *files, class_="files"))
 
 
 def _captures(facts: Facts) -> Inside:

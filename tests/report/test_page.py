@@ -1,0 +1,204 @@
+"""The page stands alone, says what was stored, and hides nothing."""
+
+from __future__ import annotations
+
+import re
+import xml.etree.ElementTree as ET
+from dataclasses import replace
+from html.parser import HTMLParser
+from typing import Any
+
+import pytest
+
+from owlight.logbook.read import open_reader
+from owlight.report import write_report
+from owlight.report.facts import Facts, gather, gather_earlier
+from owlight.report.page import page
+from owlight.vocabulary.events import Check, SafeState, SafeStepOutcome
+from owlight.vocabulary.result import Conclusion
+from owlight.vocabulary.values import Stamp
+
+QUESTIONS = ["Did it finish?", "Is the bench safe?", "What is the number?", "Can I believe it?", "What to redo?"]
+QUESTIONS.append("What differs from last time?")
+
+
+@pytest.fixture(scope="module")
+def facts(told: Any) -> Facts:
+    with open_reader(told.folder) as reader:
+        return gather(reader, told.run_id)
+
+
+@pytest.fixture(scope="module")
+def earlier(told: Any) -> Facts | None:
+    with open_reader(told.folder) as reader:
+        return gather_earlier(reader, told.run_id)
+
+
+class Balance(HTMLParser):
+    """Every element that opens is closed in its turn."""
+
+    def __init__(self, text: str) -> None:
+        super().__init__()
+        self.stack: list[str] = []
+        self.words: list[str] = []
+        self.feed(text)
+
+    def handle_starttag(self, tag: str, attrs: Any) -> None:
+        if tag != "meta":
+            self.stack.append(tag)
+
+    def handle_endtag(self, tag: str) -> None:
+        assert self.stack.pop() == tag
+
+    def handle_data(self, data: str) -> None:
+        if self.stack and self.stack[-1] != "style":
+            self.words.append(data)
+
+
+def words_of(text: str) -> str:
+    return " ".join(Balance(text).words)
+
+
+def test_page_stands_alone(told: Any) -> None:
+    with open_reader(told.folder) as reader:
+        text = write_report(reader, told.run_id, told.folder).read_text("utf-8")
+    assert not re.search(r"https?:|<script|<link|<img|src=|@import|url\(", text)
+    assert Balance(text).stack == []
+
+
+def test_six_questions_come_first(facts: Facts, earlier: Facts | None) -> None:
+    words = words_of(page(facts, earlier))
+    places = [words.index(question) for question in (*QUESTIONS, "The curve")]
+    assert places == sorted(places)
+
+
+def test_number_is_the_stored_one(facts: Facts) -> None:
+    words = words_of(page(facts, None)).replace("−", "-")
+    s = facts.sensitivities[0]
+    for value in (s.received_power_dbm, s.low_dbm, s.high_dbm, s.statistical_low_dbm, s.statistical_high_dbm):
+        assert f"{value:.3f}" in words
+    for needed in ("receiver signal input", "total average, both polarisations", "7 % overhead", "3.8×10⁻³"):
+        assert needed in words
+
+
+def test_simulation_is_marked(facts: Facts) -> None:
+    assert "not a measurement of hardware" in words_of(page(facts, None))
+    real = replace(facts, plan=replace(facts.plan, simulated=False))
+    assert "not a measurement of hardware" not in words_of(page(real, None))
+
+
+def test_texts_are_escaped(facts: Facts) -> None:
+    nasty = '<b onload="x">&"'
+    text = page(replace(facts, plan=replace(facts.plan, name=nasty)), None)
+    assert "<b onload" not in text and nasty in words_of(text)
+
+
+def test_zero_errors_are_drawn_as_arrow(facts: Facts) -> None:
+    assert facts.conclusion is not None
+    points = facts.conclusion.points
+    limit = replace(points[0], errors=0, ber=None, ber_low=0.0, ber_high=3e-6, upper_limit=True, fitted=False)
+    changed = replace(facts, conclusion=replace(facts.conclusion, points=(limit, *points[1:])))
+    before, after = page(facts, None), page(changed, None)
+    # each picture exists wide and narrow
+    assert before.count('class="limit ') == 0 and after.count('class="limit ') == 2
+    assert "below 3×10⁻⁶" in words_of(after) and after.count('class="point') == before.count('class="point') - 2
+
+
+def test_points_lie_on_their_scales(facts: Facts) -> None:
+    assert facts.conclusion is not None
+    svg = ET.fromstring(re.findall(r"<svg.*?</svg>", page(facts, None))[0])
+    circles = [c for c in svg.iter("circle") if "point" in (c.get("class") or "")]
+    import numpy as np
+
+    y = np.array([float(c.get("cy") or 0) for c in circles])
+    x = np.array([float(c.get("cx") or 0) for c in circles])
+    log_ber = np.log10([p.ber or 1.0 for p in facts.conclusion.points])
+    powers = np.array([p.received_power_dbm for p in facts.conclusion.points])
+    for place, value in ((x, powers), (y, log_ber)):
+        straight = np.polyval(np.polyfit(value, place, 1), value)
+        assert np.max(np.abs(straight - place)) < 0.11  # coordinates are written to a tenth of a unit
+
+
+def test_unconfirmed_safe_state_is_said(facts: Facts) -> None:
+    steps = (SafeStepOutcome("signal_laser", "output off", "1", False),)
+    words = words_of(page(replace(facts, safe_state=SafeState(Stamp("", 0.0, 1), False, steps)), None))
+    assert "Not confirmed." in words and "Treat the light as on" in words
+    assert "Unknown." in words_of(page(replace(facts, safe_state=None), None))
+
+
+def test_doubt_and_failure_are_shown(facts: Facts) -> None:
+    words = words_of(page(facts, None))
+    assert "With reserve" in words and "2 of 3 captures locked" in words
+    assert "a stay failed: the oscilloscope's record was short" in words and "owlight reproduce" in words
+
+
+def test_difference_names_what_changed(facts: Facts, earlier: Facts | None) -> None:
+    assert earlier is not None
+    words = words_of(page(facts, earlier))
+    moved_db = facts.sensitivities[0].received_power_dbm - earlier.sensitivities[0].received_power_dbm
+    assert f"{moved_db:+.3f} dB".replace("-", "−") in words
+    assert "signal_laser: firmware 1.2 became 1.3" in words and "seed 1 became 2" in words
+    assert "There is no earlier run" in words_of(page(facts, None))
+
+
+def test_common_doubt_cancels_only_when_shared(facts: Facts, earlier: Facts | None) -> None:
+    assert earlier is not None
+    other = tuple(replace(i, serial_number="OWL-PM-0002") if i.role == "power_meter" else i for i in facts.identities)
+    assert "cancels" in words_of(page(facts, earlier))
+    assert "cancels" not in words_of(page(replace(facts, identities=other), earlier))
+
+
+def test_run_without_sensitivity_says_why(facts: Facts) -> None:
+    empty = Conclusion(
+        (), (), (), (), (Check("lock", "run", None, None, "not evaluated", "nothing"),), "No lock at all."
+    )
+    words = words_of(page(replace(facts, conclusion=empty, stays=()), None))
+    assert "There is none." in words and "No lock at all." in words and "there is no curve" in words
+    assert "no conclusion yet" in words_of(page(replace(facts, conclusion=None, history=(), stays=()), None))
+
+
+def test_overdue_calibration_is_said(facts: Facts) -> None:
+    late = replace(facts, header=replace(facts.header, started_utc="2028-01-01T00:00:00.000000Z"))
+    assert "overdue since 2027-06-30" in words_of(page(late, None))
+    assert "overdue" not in words_of(page(facts, None))
+
+
+def test_what_was_not_assessed_is_printed(facts: Facts) -> None:
+    assert "not assessed" in words_of(page(facts, None))
+
+
+def test_everything_to_repeat_is_there(facts: Facts) -> None:
+    words = words_of(page(facts, None))
+    for needed in (facts.header.run_id, "owlight demo", *(source.sha256 for source in facts.sources)):
+        assert needed in words
+    assert facts.written_by["captures_sha256"] in words and "numpy 2.4.0" in words
+
+
+def test_several_curves_are_told_apart(facts: Facts) -> None:
+    c = facts.conclusion
+    assert c is not None
+    second = tuple(replace(p, group="lo_power 13 dBm", received_power_dbm=p.received_power_dbm - 0.5) for p in c.points)
+    s = replace(c.sensitivities[0], group="lo_power 13 dBm")
+    both = replace(c, points=(*c.points, *second), sensitivities=(*c.sensitivities, s))
+    text = page(replace(facts, conclusion=both), None)
+    assert "curve1" in re.findall(r"<svg.*?</svg>", text)[0] and "2 sensitivities." in words_of(text)
+
+
+def _luminance(colour: str) -> float:
+    """Relative luminance, WCAG 2.2."""
+    parts = [int(colour[i : i + 2], 16) / 255 for i in (1, 3, 5)]
+    linear = [c / 12.92 if c <= 0.04045 else ((c + 0.055) / 1.055) ** 2.4 for c in parts]
+    return 0.2126 * linear[0] + 0.7152 * linear[1] + 0.0722 * linear[2]
+
+
+def test_hues_stay_apart_in_grey(facts: Facts) -> None:
+    style = re.findall(r"<style>(.*?)</style>", page(facts, None), re.DOTALL)[0]
+    themes = re.findall(r"--paper: (#\w+); --ink: (#\w+).*?--x: (#\w{6}); --y: (#\w{6})", style, re.DOTALL)
+    assert len(themes) == 3
+    for paper, ink, x, y in themes:
+        paper, ink = (c if len(c) == 7 else "#" + "".join(2 * digit for digit in c[1:]) for c in (paper, ink))
+        light = {name: _luminance(colour) + 0.05 for name, colour in (("p", paper), ("i", ink), ("x", x), ("y", y))}
+        assert max(light["x"] / light["y"], light["y"] / light["x"]) > 1.5
+        # WCAG 2.2: 7 to 1 for text at level AAA, 3 to 1 for what a drawing needs (1.4.11); Y is never alone: it has dashes
+        assert max(light["p"] / light["i"], light["i"] / light["p"]) > 7
+        assert max(light["p"] / light["x"], light["x"] / light["p"]) > 3
