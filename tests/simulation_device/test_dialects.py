@@ -2,8 +2,6 @@
 
 import pytest
 
-from owlight.simulation.device.exchange import Exchange
-
 ROLE = {"laser": "signal_laser", "attenuator": "attenuator", "oscilloscope": "oscilloscope"}
 SPOKEN = [
     ("laser", "OUTP ON;OUTP?", "1"),
@@ -77,10 +75,3 @@ def test_trace_is_new_only_once(make_bench):
     assert bench.ask(role, "TRAC1:DATA?") == ""
     assert bench.ask(role, "*ESR?") == "16"
     assert bench.ask(role, "TRAC2:DATA?").startswith("#41000")
-
-
-def test_half_a_block_ends_with_its_message(bench):
-    exchange = Exchange(bench.instruments["attenuator"])
-    assert exchange.write(b"INP:ATT #19ab", end=True) == []
-    assert exchange.write(b"*OPC?", end=True) == [b"1\n"]
-    assert bench.error("attenuator") == -161

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import os
 import socket
 import subprocess
@@ -199,16 +200,23 @@ def test_missing_world_is_told():
         simulation.start(Path("no_world.toml"))
 
 
-def test_process_ends_when_nobody_needs_it(world_path):
+def test_process_logs_and_ends_when_nobody_needs_it(world_path):
     source = str(Path(simulation.__file__).parents[2])
     process = subprocess.Popen(
-        [sys.executable, "-m", "owlight.simulation", str(world_path), "--grace", "0.1"],
+        [sys.executable, "-m", "owlight.simulation", str(world_path), "--stepped", "--log", "--grace", "0.1"],
         stdin=subprocess.PIPE,
         stdout=subprocess.PIPE,
+        stderr=subprocess.PIPE,
         env=os.environ | {"PYTHONPATH": source},
     )
-    assert process.stdin is not None and process.stdout is not None
-    assert process.stdout.readline().startswith(b'{"roles"')
-    process.stdin.close()
+    assert process.stdin is not None and process.stdout is not None and process.stderr is not None
+    announced = json.loads(process.stdout.readline())
+    port = int(announced["roles"]["receiver"]["socket"].split("::")[2])
+    with socket.create_connection(("127.0.0.1", port), timeout=5) as client:
+        process.stdin.close()  # the starter is gone, but somebody is still connected
+        client.sendall(b"SYST:VERS?\n")
+        assert client.recv(64) == b"1999.0\n"
     assert process.wait(timeout=10) == 0
+    assert b"receiver < SYST:VERS? receiver > '1999.0" in process.stderr.read()
     process.stdout.close()
+    process.stderr.close()

@@ -67,9 +67,9 @@ class Control:
 class SteppedClock:
     """The simulated bench's time as a Clock: sleeping moves it, declared latencies do too."""
 
-    def __init__(self, control: Control, began: datetime | None = None) -> None:
+    def __init__(self, control: Control) -> None:
         self._control = control
-        self._began = began or datetime.now(UTC)
+        self._began = datetime.now(UTC)
 
     def utc(self) -> str:
         return iso_utc(self._began + timedelta(seconds=self._control.now_s()))

@@ -18,6 +18,7 @@ from owlight.simulation.physics import Physics
 from owlight.vocabulary.seeds import seed_for
 
 _STEPS_OF_A_MOVE = 4
+_REMEMBERED_S = 60.0  # longer than any averaging window
 _FIELDS = {
     "signal_on": ("signal_laser", "output"),
     "signal_power_dbm": ("signal_laser", "power"),
@@ -58,7 +59,6 @@ class SharedLight:
         self.physics = physics
         self.instruments = instruments
         self.time = time
-        self.remember_s = 60.0
         for instrument in instruments.values():
             instrument.before_change = self.catch_up
             instrument.after_change = self.look
@@ -117,7 +117,7 @@ class SharedLight:
             self._remember(_Stretch(from_s, to_s, self.at((from_s + to_s) / 2)))
             self._expose(self.at(to_s))
         self._seen_s = now_s
-        while self._past and self._past[0].to_s < now_s - self.remember_s:
+        while self._past and self._past[0].to_s < now_s - _REMEMBERED_S:
             self._past.popleft()
 
     def look(self) -> None:

@@ -11,6 +11,7 @@ import threading
 import time
 from collections.abc import Mapping
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 
 from owlight import shipped
@@ -30,6 +31,7 @@ from owlight.vocabulary.terms import ROLES
 
 _GRACE_S = 5.0  # a guard may still open links after its runner died
 _LOOK_S = 0.1
+_LONGEST_SHOWN = 120
 
 
 @dataclass(frozen=True)
@@ -78,7 +80,7 @@ def read_files(names: Mapping[str, str], near: Path) -> dict[str, InstrumentFile
     return files
 
 
-def bench(world_path: Path, stepped: bool) -> Served:
+def bench(world_path: Path, stepped: bool, log: bool = False) -> Served:
     """The world of the file, served; InputError if it or an instrument's file is wrong."""
     document = read_world(world_path.read_text(encoding="utf-8"), str(world_path))
     if document.problems or document.value is None:
@@ -86,14 +88,22 @@ def bench(world_path: Path, stepped: bool) -> Served:
     world = document.value
     files = read_files({role: world.instruments[role] for role in ROLES}, world_path)
     instruments, light = build(files, world.serial_numbers, WorldPhysics(world), BenchTime(stepped))
+    if log:
+        for instrument in instruments.values():
+            instrument.overheard = partial(_log, instrument.role)
     return serve(instruments, light)
+
+
+def _log(role: str, message: str, response: bytes) -> None:
+    shown = response if len(response) <= _LONGEST_SHOWN else response[:_LONGEST_SHOWN] + b"..."
+    print(f"{role} < {message}", f"{role} > {shown.decode('latin-1')!r}" if response else "", file=sys.stderr)
 
 
 def main(arguments: list[str]) -> int:
     """Serve until nobody needs it; the exit status is that of the error's class."""
     asked = _options().parse_args(arguments)
     try:
-        served = bench(asked.world, asked.stepped)
+        served = bench(asked.world, asked.stepped, asked.log)
     except OSError as error:
         print(f"The world file cannot be read: {error}.", file=sys.stderr)
         return InputError.exit_status
@@ -111,6 +121,7 @@ def _options() -> argparse.ArgumentParser:
     mode = options.add_mutually_exclusive_group()
     mode.add_argument("--stepped", action="store_true", help="time moves when it is told to, through the control port")
     mode.add_argument("--wall", dest="stepped", action="store_false", help="time passes on the wall (default)")
+    options.add_argument("--log", action="store_true", help="every message and answer on standard error")
     words = "seconds to stay when the starter has gone and no session is open"
     options.add_argument("--grace", type=float, default=_GRACE_S, help=words)
     return options
@@ -124,6 +135,8 @@ def _serve_until_unneeded(served: Served, grace_s: float) -> None:
     threading.Thread(target=_watch_standard_input, args=(orphaned,), daemon=True).start()
     needed_s = time.monotonic()
     while not stop.wait(_LOOK_S):
+        if orphaned.is_set():
+            served.control.let_time_pass()  # a guard waits on the wall, not through the control port
         if not orphaned.is_set() or served.open_sessions:
             needed_s = time.monotonic()
         elif time.monotonic() - needed_s > grace_s:

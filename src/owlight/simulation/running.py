@@ -57,7 +57,9 @@ def start(world_path: Path, stepped: bool = True) -> RunningSimulation:
             stdout=subprocess.PIPE,
             stderr=words,
             env=surroundings,
-            start_new_session=True,  # Ctrl-C is for the runner, which needs the bench to make it safe
+            # Ctrl-C is for the runner, which needs the bench to make it safe
+            start_new_session=True,
+            creationflags=getattr(subprocess, "CREATE_NEW_PROCESS_GROUP", 0),
         )
         assert process.stdout is not None
         line = process.stdout.readline()

@@ -35,6 +35,11 @@ class BenchTime:
             raise ValueError("time can only be advanced forwards, and only in stepped mode")
         self._stepped_s += seconds
 
+    def let_pass(self) -> None:
+        """From now on time passes on the wall: nobody is left to step it."""
+        self._began_s = time.monotonic() - self.now_s()
+        self.stepped = False
+
     def wait_until(self, moment_s: float, cleared: Callable[[], bool]) -> None:
         """Cleared if a device clear came meanwhile. The caller holds the lock; on the wall it is free while waiting."""
         if self.stepped:

@@ -36,20 +36,15 @@ class Exchange:
             answers = list(self.instrument.execute(message.rstrip("\r"), lambda: self._cleared))
         except Cleared:
             return b""
-        if not answers:
-            return b""
-        encoded = (answer if isinstance(answer, bytes) else answer.encode("latin-1") for answer in answers)
-        return b";".join(encoded) + b"\n"
+        encoded = [answer if isinstance(answer, bytes) else answer.encode("latin-1") for answer in answers]
+        response = b";".join(encoded) + b"\n" if encoded else b""
+        self.instrument.overheard(message, response)
+        return response
 
     def status_byte(self) -> int:
         with self.instrument.time.lock:
             self.instrument.refresh()
             return self.instrument.status.byte(self.unread)
-
-    def unterminated(self) -> None:
-        """The client asks for a response where none is due."""
-        with self.instrument.time.lock:
-            self.instrument.status.report(DeviceError(-420))
 
     def clear(self) -> None:
         """Device clear, clause 5.8: buffers emptied and waits ended; settings, status and errors stay."""

@@ -57,6 +57,7 @@ class Instrument:
         self.time = time
         self.before_change: Callable[[], None] = lambda: None
         self.after_change: Callable[[], None] = lambda: None
+        self.overheard: Callable[[str, bytes], None] = lambda message, response: None
         self.behaviour: Behaviour = _Nothing()
         self.power_up()
         self._tree: CommandTree[Entry] = CommandTree()

@@ -12,6 +12,7 @@ from owlight.simulation.device.errors import DeviceError
 Kind = Literal["number", "nondecimal", "word", "string", "block", "expression"]
 _SPACE = "".join(chr(code) for code in range(33) if code != 10)  # clause 7.4.1.2: all but NL
 _LONGEST_MNEMONIC = 12
+_MOST_DIGITS = 255
 _MNEMONIC = re.compile(r"[A-Za-z][A-Za-z0-9_]*")
 _HEADER = re.compile(r"(?:\*[A-Za-z][A-Za-z0-9_]*|:?[A-Za-z][A-Za-z0-9_]*(?::[A-Za-z][A-Za-z0-9_]*)*)\??")
 _DECIMAL = re.compile(r"([+-]?(?:\d+\.?\d*|\.\d+)(?:\s*[eE]\s*[+-]?\d+)?)\s*([A-Za-z/][A-Za-z0-9/.^-]*)?")
@@ -134,6 +135,8 @@ class _Reader:
             digits, base = next(
                 (digits, base) for digits, base in zip(match.groups(), (16, 8, 2), strict=True) if digits
             )
+            if len(digits) > _MOST_DIGITS:
+                raise DeviceError(-124)
             return Parameter("nondecimal", str(int(digits, base)))
         start, end = block_span(self.text, self.at)
         if end is None:
@@ -171,9 +174,9 @@ def block_span(text: str, at: int) -> tuple[int, int | None]:
     digit = text[at + 1 : at + 2]
     if digit == "0":
         return at + 2, len(text)
-    length = text[at + 2 : at + 2 + int(digit)] if digit.isdigit() else ""
+    length = text[at + 2 : at + 2 + int(digit)] if digit.isdecimal() else ""
     start = at + 2 + len(length)
-    if not length.isdigit() or len(length) < int(digit):
+    if not length.isdecimal() or len(length) < int(digit):
         return start, None
     end = start + int(length)
     return start, end if end <= len(text) else None
@@ -208,4 +211,4 @@ def split(buffer: str) -> tuple[list[str], str]:
 
 def _may_grow(buffer: str, at: int) -> bool:
     """Whether what stands here is a block's beginning and not a mistake."""
-    return buffer[at + 2 : at + 2 + int(buffer[at + 1])].isdigit() or len(buffer) <= at + 2
+    return buffer[at + 2 : at + 2 + int(buffer[at + 1])].isdecimal() or len(buffer) <= at + 2

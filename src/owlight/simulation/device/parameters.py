@@ -36,7 +36,7 @@ def _mantissa(parameter: Parameter) -> float:
     mantissa, _, exponent = parameter.text.upper().partition("E")
     if len(mantissa.strip("+-0.")) > _MOST_DIGITS:
         raise DeviceError(-124)
-    if exponent and abs(int(exponent)) > _LARGEST_EXPONENT:
+    if exponent and (len(exponent) > 7 or abs(int(exponent)) > _LARGEST_EXPONENT):
         raise DeviceError(-123, exponent)
     return float(parameter.text)
 

@@ -115,7 +115,9 @@ class Setting:
         if parameter.kind == "word":
             return self._keyword(parameter.text)
         value = parameters.in_unit(parameter, self.file.unit, suffixes)
-        return round(value) if self.file.type == "integer" else value
+        if self.file.type == "integer" and math.isfinite(value):
+            return round(value)
+        return value
 
     def _keyword(self, word: str) -> Plain:
         if word in ("NAN", "INF", "INFINITY", "NINF", "NINFINITY"):

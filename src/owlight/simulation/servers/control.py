@@ -44,6 +44,11 @@ class ControlServer:
         except (ValueError, KeyError, TypeError) as error:
             return {"ok": False, "words": f"{error}; known: {', '.join(self._verbs)}"}
 
+    def let_time_pass(self) -> None:
+        with self._light.time.lock:
+            if self._light.time.stepped:
+                self._light.time.let_pass()
+
     def _advance(self, seconds: float) -> dict[str, Any]:
         self._light.time.advance(seconds)
         return self._now()

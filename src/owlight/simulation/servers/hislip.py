@@ -65,7 +65,6 @@ class _Session:
         self.faults = faults
         self.largest_message = _LARGEST_MESSAGE
         self.clearing = threading.Event()
-        self.synchronous: socket.socket | None = None
 
 
 class HislipServer:
@@ -106,7 +105,6 @@ class HislipServer:
             return
         number = next(self._numbers) & 0xFFFF
         session = _Session(Exchange(self._instruments[role]), self._faults[role])
-        session.synchronous = connection
         self._sessions[number] = session
         try:
             send(connection, INITIALIZE_RESPONSE, 0, _VERSION_1_0 << 16 | number)

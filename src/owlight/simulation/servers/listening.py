@@ -28,10 +28,7 @@ class Listener:
 
     def _accept(self) -> None:
         while True:
-            try:
-                connection, _ = self._socket.accept()
-            except OSError:
-                return
+            connection, _ = self._socket.accept()
             # an answer is one send; with Nagle's algorithm it could still wait 40 ms for an acknowledgement
             connection.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
             with self._lock:
@@ -46,9 +43,6 @@ class Listener:
             with self._lock:
                 self._open.discard(connection)
             connection.close()
-
-    def close(self) -> None:
-        self._socket.close()
 
 
 def receive_exactly(connection: socket.socket, count: int) -> bytes | None:
