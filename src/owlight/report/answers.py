@@ -76,12 +76,18 @@ def the_number(facts: Facts) -> Answer:
         words = facts.conclusion.words if facts.conclusion else "The run has no conclusion yet."
         return Answer(question, "There is none.", (words or "The sequence states no measurand.",))
     if len(facts.sensitivities) > 1:
-        lines = tuple(together(element("b", level(s.received_power_dbm)), f" {s.group}") for s in facts.sensitivities)
-        return Answer(question, f"{len(lines)} sensitivities.", (*lines, *_definition(facts)))
+        lines = tuple(line for s in facts.sensitivities for line in _one_of_several(s))
+        return Answer(question, f"{len(facts.sensitivities)} sensitivities.", (*lines, *_definition(facts)))
     s = facts.sensitivities[0]
     headline = element("span", level(s.received_power_dbm, decimals(s)), class_="result")
     mark = ("Extrapolated: the threshold lies outside the measured points.",) if s.extrapolated else ()
     return Answer(question, headline, (*mark, *intervals(s), *_definition(facts), *_penalty(facts)))
+
+
+def _one_of_several(s: Sensitivity) -> tuple[Inside, str]:
+    mark = " (extrapolated)" if s.extrapolated else ""
+    value = element("b", level(s.received_power_dbm, decimals(s)))
+    return together(s.group, ": ", value, mark), "; ".join(intervals(s))
 
 
 def intervals(s: Sensitivity) -> tuple[str, str]:

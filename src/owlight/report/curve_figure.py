@@ -16,6 +16,8 @@ from owlight.report.wording import counted, level, ratio
 from owlight.vocabulary.result import CurvePoint, Sensitivity
 
 _ARROW = 20.0
+_SHAPES = (d.dot, d.diamond, d.square)
+"""Curves differ in shape as well as in hue, so that grey paper tells them apart."""
 
 
 @dataclass(frozen=True)
@@ -45,10 +47,10 @@ def curve_figure(facts: Facts, size: Size) -> Markup | None:
         of_group = tuple(point for point in drawn if point.group == group)
         if found is not None and facts.plan.signal is not None:
             marks += _fitted(found, facts.plan.signal.modulation, of_group, frame, hue)
-            marks += _sensitivity(found, facts, frame, label=len(curves) == 1)
-        marks += [mark for point in of_group for mark in _point(point, frame, hue)]
-        if len(curves) > 1:
-            marks.append(_label(of_group, group, frame, hue))
+            marks += _sensitivity(found, facts, frame, hue, label=len(curves) == 1)
+        marks += [mark for point in of_group for mark in _point(point, frame, number)]
+    if len(curves) > 1:
+        marks += _legend(curves, frame)
     marks += _titles(facts, frame, size)
     return d.drawing(marks, size.width, size.height, _in_words(facts, drawn), size.kind)
 
@@ -103,7 +105,7 @@ def _fitted(
     return marks
 
 
-def _sensitivity(found: Sensitivity, facts: Facts, frame: d.Frame, label: bool) -> list[Markup]:
+def _sensitivity(found: Sensitivity, facts: Facts, frame: d.Frame, hue: str, label: bool) -> list[Markup]:
     """The total interval as a band, the statistical one darker inside it, and a line down to the axis."""
     assert facts.plan.measurand is not None
     y, x = frame.y.at(math.log10(facts.plan.measurand.threshold_ber)), frame.x.at(found.received_power_dbm)
@@ -112,7 +114,7 @@ def _sensitivity(found: Sensitivity, facts: Facts, frame: d.Frame, label: bool) 
     marks = [
         d.box(inside[0], frame.y.start, inside[1], y, "total"),
         d.box(tight[0], frame.y.start, tight[1], y, "statistical"),
-        d.line(x, frame.y.start, x, y, "result"),
+        d.line(x, frame.y.start, x, y, f"drop {hue}"),
     ]
     if label:
         marks.append(
@@ -123,7 +125,8 @@ def _sensitivity(found: Sensitivity, facts: Facts, frame: d.Frame, label: bool) 
     return marks
 
 
-def _point(point: CurvePoint, frame: d.Frame, hue: str) -> list[Markup]:
+def _point(point: CurvePoint, frame: d.Frame, number: int) -> list[Markup]:
+    hue = f"curve{number % 4}"
     x = frame.x.at(point.received_power_dbm)
     if point.upper_limit or point.ber is None:
         return [d.arrow_down(x, frame.y.at(math.log10(point.ber_high)), _ARROW, f"limit {hue}")]
@@ -135,15 +138,19 @@ def _point(point: CurvePoint, frame: d.Frame, hue: str) -> list[Markup]:
         d.line(x, top, x, foot, f"interval {hue}"),
         d.line(x - 4, top, x + 4, top, f"interval {hue}"),
         d.line(x - 4, foot, x + 4, foot, f"interval {hue}"),
-        d.dot(x, frame.y.at(math.log10(point.ber)), 4, kind, words),
+        _SHAPES[number % len(_SHAPES)](x, frame.y.at(math.log10(point.ber)), 4, kind, words),
     ]
 
 
-def _label(points: tuple[CurvePoint, ...], group: str, frame: d.Frame, hue: str) -> Markup:
-    """At the curve's upper end, where curves lie furthest apart."""
-    first = min(points, key=lambda point: point.received_power_dbm)
-    y = frame.y.at(math.log10(first.ber or first.ber_high))
-    return d.text(frame.x.at(first.received_power_dbm) + 8, y - 4, group, f"note {hue}")
+def _legend(curves: tuple[str, ...], frame: d.Frame) -> list[Markup]:
+    """In the lower left corner, which a falling curve leaves free."""
+    marks = []
+    for number, group in enumerate(reversed(curves)):
+        which = len(curves) - 1 - number
+        x, y = frame.x.start + 14, frame.y.start - 14 - 18 * number
+        marks.append(_SHAPES[which % len(_SHAPES)](x, y, 4, f"point curve{which % 4}", ""))
+        marks.append(d.text(x + 12, y + 4, group, "note"))
+    return marks
 
 
 def _in_words(facts: Facts, points: tuple[CurvePoint, ...]) -> str:

@@ -100,6 +100,12 @@ def diamond(x: float, y: float, radius: float, kind: str, title: str = "") -> Ma
     return element("path", _title(title), d=corners, class_=kind)
 
 
+def square(x: float, y: float, radius: float, kind: str, title: str = "") -> Markup:
+    side = _n(1.8 * radius)
+    left, top = _n(x - 0.9 * radius), _n(y - 0.9 * radius)
+    return element("rect", _title(title), x=left, y=top, width=side, height=side, class_=kind)
+
+
 def cross(x: float, y: float, radius: float, kind: str, title: str = "") -> Markup:
     strokes = (
         f"M{_n(x - radius)} {_n(y - radius)}L{_n(x + radius)} {_n(y + radius)}"

@@ -128,11 +128,18 @@ def budget(facts: Facts) -> Markup | None:
         for line in lines
     ]
     rows += [(name, "B", NOT_ASSESSED, words) for name, words in _KNOWN_BUT_NOT_IN_A_BENCH_FILE]
-    for s in facts.sensitivities[:1]:
+    for s in facts.sensitivities:
         combined = math.hypot(s.u_statistical_db, s.u_common_db)
         words = f"total interval {100 * s.coverage:.0f} %: {number(s.low_dbm, 3)} to {level(s.high_dbm, 3)}"
         factor = f", k = {coverage_factor(s):.2f}"
-        rows.append((element("b", "combined"), "", element("b", number(combined, 4)), words + factor))
+        rows.append(
+            (
+                element("b", f"combined{', ' + s.group if s.group else ''}"),
+                "",
+                element("b", number(combined, 4)),
+                words + factor,
+            )
+        )
     return table(
         ("component", "type", "standard uncertainty / dB", "in words"), rows, numeric=frozenset({2}), kind="budget"
     )
