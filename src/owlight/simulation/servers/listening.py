@@ -28,7 +28,10 @@ class Listener:
 
     def _accept(self) -> None:
         while True:
-            connection, _ = self._socket.accept()
+            try:
+                connection, _ = self._socket.accept()
+            except OSError:  # closed
+                return
             # an answer is one send; with Nagle's algorithm it could still wait 40 ms for an acknowledgement
             connection.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
             with self._lock:
@@ -43,6 +46,11 @@ class Listener:
             with self._lock:
                 self._open.discard(connection)
             connection.close()
+
+    def close(self) -> None:
+        with contextlib.suppress(OSError):  # only a shutdown wakes the thread that accepts, and not on every system
+            self._socket.shutdown(socket.SHUT_RDWR)
+        self._socket.close()
 
 
 def receive_exactly(connection: socket.socket, count: int) -> bytes | None:
