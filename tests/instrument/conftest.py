@@ -147,6 +147,6 @@ def joined() -> Joined:
     return join()
 
 
-@pytest.fixture
+@pytest.fixture(scope="session")
 def join_with() -> Callable[..., Joined]:
     return join

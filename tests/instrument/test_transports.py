@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-
 import numpy as np
 import pytest
 
@@ -17,12 +15,11 @@ SHORT_S = 0.05
 TRANSPORTS = ("hislip", "socket")
 
 
-@pytest.fixture
-def served(joined) -> Iterator[tuple[object, Served]]:
-    server = serve(joined.simulated, joined.truth)
-    yield joined, server
-    for listener in (server.hislip.listener, server.control.listener, *(s.listener for s in server.sockets.values())):
-        listener.close()
+@pytest.fixture(scope="module")
+def served(join_with) -> tuple[object, Served]:
+    """One bench for all tests here; it ends with the process."""
+    joined = join_with()
+    return joined, serve(joined.simulated, joined.truth)
 
 
 def reach(served, role: str, transport: str) -> Instrument:
@@ -69,7 +66,7 @@ def test_fault_poisons_and_a_new_session_is_right(served, transport: str, kind: 
     assert next(e for e in reversed(joined.events) if isinstance(e, Exchange)).trouble
     link.reopen(2.0)
     for _ in range(3):
-        assert float(link.query("INP:ATT?", 1.0)) == 0.0
+        assert float(link.query("INP:ATT?", 1.0)) == joined.simulated["attenuator"].value("attenuation")
         assert link.query("*IDN?", 1.0) == link.identity_text
 
 

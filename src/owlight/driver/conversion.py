@@ -91,6 +91,8 @@ def value_of(driver: Driver, term: Term, response: str) -> Value | None:
     if number is None:
         return None
     if kind is int:
+        if not math.isfinite(number):
+            raise ValueError(f"{response!r} is not a whole number")
         return round(number)
     speaker: Setting | Reading = setting if setting is not None else driver.reading[term.name]
     if not math.isfinite(number):

@@ -4,35 +4,22 @@ from __future__ import annotations
 
 import math
 import statistics
-from dataclasses import dataclass
-
-import numpy as np
 
 from owlight.clock import Clock
 from owlight.driver import Action, Driver, Record, Setting, program_message, query, value_of
 from owlight.errors import InstrumentError
+from owlight.instrument.record import LaneRecord, fetch_lane
 from owlight.instrument.settling import wait_arrived, wait_settled
 from owlight.link import Link, Stamper
 from owlight.quantity import words
 from owlight.scpi import ErrorEntry, IdentityText, hint
 from owlight.scpi.errors import OUT_OF_RANGE
 from owlight.vocabulary import events, values
-from owlight.vocabulary.captures import Codes
 from owlight.vocabulary.terms import TERMS
 from owlight.vocabulary.values import Applied, Identity, Term, Value
 
 QUERY_DEADLINE_S = 5.0
 _MOST_ENTRIES = 64
-_SMALLEST_BLOCK_BYTES = 1 << 20  # a record that is too long is still read: it is a finding
-
-
-@dataclass(frozen=True, eq=False)
-class LaneRecord:
-    """One lane as it was digitised: volts = codes * volts_per_code + offset_v."""
-
-    codes: Codes
-    volts_per_code: float
-    offset_v: float
 
 
 class Instrument:
@@ -134,16 +121,9 @@ class Instrument:
         if not self._prepared:
             self._must_obey(record.prepare)
             self._prepared = True
-        self._arm(record)
-        try:
-            wait_settled(self.role, record.settled, self._ask, self._clock)
-        except InstrumentError:
-            if record.abort:
-                self.link.write(record.abort, QUERY_DEADLINE_S)
-            raise
+        self._arm_and_wait(record)
         lanes = tuple(
-            self._scaled(record, channel, self._fetch(record, channel, record_length), ranges_v.get(channel))
-            for channel in channels
+            fetch_lane(self.link, record, channel, record_length, ranges_v.get(channel)) for channel in channels
         )
         entries = self._drain()
         if entries:
@@ -154,37 +134,17 @@ class Instrument:
             )
         return lanes
 
-    def _arm(self, record: Record) -> None:
+    def _arm_and_wait(self, record: Record) -> None:
         if record.settled.by == "opc":
             self._complete(record.arm, record.settled.at_most_s)
-        else:
-            self.link.write(record.arm, QUERY_DEADLINE_S)
-
-    def _fetch(self, record: Record, channel: int, samples: int) -> Codes:
-        expected = samples * record.bytes_per_sample
-        data = self.link.query_block(
-            record.fetch.replace("{channel}", str(channel)),
-            max(2 * expected, _SMALLEST_BLOCK_BYTES),
-            record.fetch_at_most_s,
-            record.terminator_after_block,
-        )
-        whole = data[: data.size - data.size % record.bytes_per_sample]
-        order = "<" if record.byte_order == "least significant first" else ">"
-        codes = whole.view(f"{order}i{record.bytes_per_sample}")
-        return codes.astype(np.int8) if record.bytes_per_sample == 1 else codes.astype(np.int16)
-
-    def _scaled(self, record: Record, channel: int, codes: Codes, range_v: float | None) -> LaneRecord:
-        if record.scaling.by == "queries":
-            scaling = (record.scaling.volts_per_code, record.scaling.offset)
-            volts, offset = (float(self._ask(q.replace("{channel}", str(channel)))) if q else 0.0 for q in scaling)
-            return LaneRecord(codes, volts, offset)
-        if range_v is None or math.isnan(range_v):
-            raise InstrumentError(
-                f"The range of channel {channel} of {self.role} was never set, so its codes have no volts. "
-                "Set it before the first record.",
-                self.role,
-            )
-        return LaneRecord(codes, range_v / record.scaling.codes_per_range, 0.0)
+            return
+        self.link.write(record.arm, QUERY_DEADLINE_S)
+        try:
+            wait_settled(self.role, record.settled, self._ask, self._clock)
+        except InstrumentError:
+            if record.abort:
+                self.link.write(record.abort, QUERY_DEADLINE_S)
+            raise
 
     def _setting(self, term: Term) -> Setting:
         if term.name not in self.driver.setting:

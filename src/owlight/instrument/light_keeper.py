@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import replace
 from typing import Any
 
@@ -58,8 +59,10 @@ class LightKeeper:
         self.learn(term, None)
 
     def learn(self, term: Term, read_back: Value | None) -> None:
+        """An infinite level is as good as none: unknown, and so the worst."""
         if term in FIELDS:
-            self.state = self._with(term, read_back)
+            unknown = isinstance(read_back, float) and not math.isfinite(read_back)
+            self.state = self._with(term, None if unknown else read_back)
 
     def _with(self, term: Term, value: Value | None) -> LightState:
         changed: dict[str, Any] = {FIELDS[term]: value}

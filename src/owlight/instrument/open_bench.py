@@ -15,9 +15,10 @@ from owlight.clock import Clock
 from owlight.driver import Driver
 from owlight.errors import BenchError, InstrumentError
 from owlight.instrument import light_keeper, lighting, steering
-from owlight.instrument.instrument import Instrument, LaneRecord
+from owlight.instrument.instrument import Instrument
 from owlight.instrument.light_keeper import FIELDS, LightKeeper
 from owlight.instrument.lock import SerialLock
+from owlight.instrument.record import LaneRecord
 from owlight.instrument.safe_state import STEP_S, take_step
 from owlight.instrument.steering import ReceivedPowerSet
 from owlight.link import Link, Opener, Stamper, open_visa
