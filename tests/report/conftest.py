@@ -11,7 +11,7 @@ import pytest
 
 from owlight.bench import common_uncertainty, read_bench
 from owlight.logbook import Logbook, Provenance
-from owlight.logbook.read import curve, open_reader
+from owlight.logbook.read import curve, history, open_reader
 from owlight.statistics import Evidence, Reason, SensitivityRequest, budget, estimate, pool, run_checks
 from owlight.theory import ber_of_snr_db, shot_noise_limit_dbm
 from owlight.vocabulary.captures import Capture, CaptureId, Demodulation, Lane, StageReport, Tributary
@@ -35,8 +35,10 @@ LANES = ("XI", "XQ", "YI", "YQ")
 FILES = (
     ("sequence", "sequences/qpsk_sensitivity.toml"),
     ("bench", "simulated_instruments/bench.toml"),
-    ("driver", "drivers/generic_laser.toml"),
-    ("driver", "drivers/generic_attenuator.toml"),
+    *(("driver", f"drivers/{path.name}") for path in sorted((ROOT / "drivers").glob("generic_*.toml"))),
+    ("world", "simulated_instruments/world.toml"),
+    *(("instrument", f"simulated_instruments/{name}.toml") for name in ("laser", "attenuator", "power_meter")),
+    *(("instrument", f"simulated_instruments/{name}.toml") for name in ("pattern_source", "oscilloscope", "receiver")),
 )
 
 
@@ -160,15 +162,18 @@ def concluded(plan: Plan, folder: Path, run_id: str) -> Conclusion:
     assert bench is not None and plan.measurand is not None
     with open_reader(folder) as reader:
         stays = curve.stays(reader, run_id)
+        demodulations = tuple(d for stay in history.history(reader, run_id) for d in stay.demodulations)
     points = pool(stays, plan.measurand.threshold_ber)
     request = SensitivityRequest(
         stays, plan.measurand.threshold_ber, ber_of_snr_db("QPSK"), common_uncertainty(bench), bench.meter.zero_u_w
     )
     found = estimate(request)
     assert not isinstance(found, Reason)
-    checks = run_checks(
-        Evidence(points, stays, (), (found,), plan.measurand.threshold_ber, request.ber_of_snr_db, 1e-10, None, ())
+    threshold_ber = plan.measurand.threshold_ber
+    evidence = Evidence(
+        points, stays, demodulations, (found,), threshold_ber, request.ber_of_snr_db, 1e-10, error_queue=()
     )
+    checks = run_checks(evidence)
     limit_dbm = shot_noise_limit_dbm("QPSK", 3.8e-3, 32e9, 1550.12, polarisations=2)
     penalty = Penalty("the shot-noise limit", found.received_power_dbm - limit_dbm, limit_dbm)
     return Conclusion(points, (found,), (penalty,), budget(request, found), checks, "")
