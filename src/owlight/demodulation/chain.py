@@ -76,7 +76,7 @@ class EqualiserSettings:
     taps: int = 15
     blind_symbols: int = 16384
     training_symbols: int = 24576
-    refresh_symbols: int = 98304
+    refresh_symbols: int = 131072
     refresh_training_symbols: int = 8192
     step: float = 2e-3
     ridge: float = 1e-4
@@ -152,7 +152,7 @@ class Chain:
             raise InputError(f"This chain has format version {read.get('format_version')}, not {FORMAT_VERSION}.")
         signal = {**read["signal"], "tributary_offsets": tuple(read["signal"]["tributary_offsets"])}
         kinds = {f.name: f.default_factory for f in dataclasses.fields(StageSettings)}
-        stages = {name: kinds[name](**values) for name, values in read["stages"].items()}  # type: ignore[operator,misc]
+        stages = {name: kinds[name](**values) for name, values in read["stages"].items()}  # type: ignore[operator]
         return cls(
             name=read["chain"],
             signal=Signal(**signal),

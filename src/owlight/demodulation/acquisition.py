@@ -1,0 +1,180 @@
+"""What the head of a record teaches: clock, equaliser, carrier, where the pattern stands. Nothing here is counted."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from owlight.demodulation.chain import Chain
+from owlight.demodulation.journal import Journal, NoLockError
+from owlight.demodulation.lane_map import Pairing, alignment_figures, alignment_words, insist, pairings
+from owlight.demodulation.stages import clock as clocks
+from owlight.demodulation.stages.carrier import carrier_phase, frequency_offset
+from owlight.demodulation.stages.equaliser import SINGULAR, blind_taps, equalise, least_squares_taps
+from owlight.demodulation.stages.front import Front, carrier_step_hz, matched_filter
+from owlight.demodulation.stages.lanes import block_spectra, orthonormalise, residual_skew
+from owlight.demodulation.stages.synchronisation import Alignment, Reference, synchronise
+
+Complex = npt.NDArray[np.complex64]
+LEAST_SYMBOLS = 2000
+_CARRIER_REACH = 0.25
+"""How far from zero the carrier is looked for, in symbol rates."""
+_CARRIER_STANDS_OUT = 1.5
+
+
+@dataclass(frozen=True)
+class Acquired:
+    """`x` at two samples a symbol; `turn` is the carrier's in radians a symbol; symbols before `trained` taught."""
+
+    x: Complex
+    taps: Complex
+    turn: float
+    trained: int
+    alignment: Alignment
+    words: str
+
+
+def acquire(z: Complex, sample_rate_hz: float, chain: Chain, reference: Reference, journal: Journal) -> Acquired:
+    """Try the lanes as believed, then every other way in which they can make polarisations; NoLockError if none works."""
+    tried = pairings(2 * len(z), chain.stages.synchronisation.permute_lanes)
+    first: tuple[Journal, NoLockError] | None = None
+    for pairing in tried:
+        attempt = Journal()
+        try:
+            found = _train(z, sample_rate_hz, pairing, chain, reference, attempt)
+        except NoLockError as trouble:
+            first = first or (attempt, trouble)
+            continue
+        journal.take_over(attempt)
+        return found
+    assert first is not None
+    journal.take_over(first[0])
+    raise NoLockError(str(first[1]) + (f" ({len(tried)} pairings of the lanes tried)" if len(tried) > 1 else ""))
+
+
+def _train(
+    z: Complex, sample_rate_hz: float, pairing: Pairing, chain: Chain, reference: Reference, journal: Journal
+) -> Acquired:
+    believed = chain.stages.deskew.believed
+    skews_s = tuple(chain.lanes[lane].skew_s if believed else 0.0 for lane in pairing.order)
+    x, step_hz = _front(pairing.apply(z), sample_rate_hz, skews_s, chain, journal)
+    trained = _training_symbols(x.shape[1] // 2, chain)
+    taps, turn = _blind(x, trained, step_hz, chain, journal)
+    settings, window = chain.stages.equaliser, chain.stages.carrier_phase.window_symbols
+    with journal.stage("equaliser") as figures:
+        for _ in range(2):
+            taps, found = least_squares_taps(x, taps, (0, trained), turn, window, settings.ridge)
+        y = steady(equalise(x, taps, 0, trained), 0, turn)
+        coefficients = taps.shape[1] * taps.shape[2]
+        figures |= {**found, "trained_symbols": float(trained), "trained_symbols_a_coefficient": trained / coefficients}
+    with journal.stage("carrier phase"):
+        y *= np.exp(-1j * carrier_phase(y, window)).astype(np.complex64)
+    with journal.stage("synchronisation") as figures:
+        alignment = synchronise(y, reference, chain.stages.synchronisation.lag_tolerance_symbols)
+        figures |= alignment_figures(alignment, chain, reference)
+        insist(alignment, chain)
+    names = [belief.name for belief in chain.lanes]
+    told = [words for words in (pairing.words.format(*names), alignment_words(alignment, chain)) if words]
+    return Acquired(x, taps, turn, trained, alignment, "; ".join(told))
+
+
+def _training_symbols(symbols: int, chain: Chain) -> int:
+    if symbols < LEAST_SYMBOLS:
+        raise NoLockError(f"only {max(symbols, 0)} symbols stand in this record, and {LEAST_SYMBOLS} are needed")
+    return min(chain.stages.equaliser.training_symbols, max(symbols // 3, min(symbols // 2, 8192)))
+
+
+def _blind(x: Complex, trained: int, step_hz: float, chain: Chain, journal: Journal) -> tuple[Complex, float]:
+    """Taps that know no pattern yet, and the carrier's turn a symbol."""
+    settings = chain.stages.equaliser
+    with journal.stage("equaliser") as figures:
+        blind = min(settings.blind_symbols, trained)
+        taps, found = blind_taps(x, chain.signal.polarisations, settings.taps, blind, settings.step)
+        figures |= found
+        if found["output_likeness"] > SINGULAR:
+            raise NoLockError("both outputs of the equaliser carry the same polarisation")
+    with journal.stage("frequency offset") as figures:
+        turn, line_db = 0.0, 0.0
+        if chain.stages.frequency_offset.on:
+            turn, line_db = frequency_offset(equalise(x, taps, 0, trained))
+        offset_hz = step_hz + turn / (2 * np.pi) * chain.signal.symbol_rate_bd
+        figures |= {"frequency_offset_hz": offset_hz, "line_db": line_db}
+    return taps, turn
+
+
+def steady(y: Complex, begin: int, turn: float) -> Complex:
+    """Without the frequency offset; y begins at symbol `begin`."""
+    return np.asarray(y * np.exp(-1j * turn * np.arange(begin, begin + y.shape[1])).astype(np.complex64))
+
+
+def _front(
+    z: Complex, sample_rate_hz: float, skews_s: tuple[float, ...], chain: Chain, journal: Journal
+) -> tuple[Complex, float]:
+    """The signal at two samples a symbol, and by how much its carrier was moved."""
+    signal, stages = chain.signal, chain.stages
+    nominal = sample_rate_hz / signal.symbol_rate_bd
+    if nominal < 1.0 + signal.rolloff:
+        raise NoLockError(f"{nominal:.2f} samples a symbol do not hold the signal; {1 + signal.rolloff:.2f} are needed")
+    length = min(clocks.estimation_length(nominal), z.shape[1] // 4)
+    if length < 64:
+        raise NoLockError(f"{z.shape[1]} samples are too few")
+    with journal.stage("clock recovery"):
+        spectra = block_spectra(z, length)
+    apart = round(length / nominal)
+    half_width = max(2, int(signal.rolloff / 2 * length / nominal))
+    with journal.stage("matched filter") as figures:
+        centre = _centre(spectra, apart, half_width, nominal, stages.matched_filter.centre)
+        centre_hz = centre * sample_rate_hz / length
+        figures["centre_hz"] = centre_hz
+    with journal.stage("clock recovery") as figures:
+        edges = clocks.band_edges(spectra, apart, centre, half_width)
+        largest_ppm = stages.clock_recovery.largest_offset_ppm if stages.clock_recovery.on else 0.0
+        found = clocks.recover_clock(edges, length, nominal, largest_ppm)
+        figures |= {"clock_offset_ppm": found.clock_offset_ppm, "clock_quality": found.quality}
+    with journal.stage("deskew") as figures:
+        rates = (sample_rate_hz, signal.symbol_rate_bd)
+        seen = residual_skew(spectra, skews_s, rates, half_width + abs(centre), found.turn_a_block)
+        skews_s = _deskewed(skews_s, seen, chain, figures)
+    with journal.stage("orthonormalisation") as figures:
+        highest_hz = (1 + signal.rolloff) / 2 * signal.symbol_rate_bd + abs(centre_hz)
+        try:
+            matrices, errors = orthonormalise(spectra, skews_s, sample_rate_hz, highest_hz)
+        except ValueError as trouble:
+            raise NoLockError(str(trouble)) from trouble
+        figures |= errors
+        if not stages.orthonormalisation.on:
+            matrices = np.broadcast_to(np.eye(2), matrices.shape)
+    with journal.stage("matched filter") as figures:
+        front = Front(sample_rate_hz, signal.symbol_rate_bd, signal.rolloff, skews_s, matrices, centre_hz, found)
+        block, overlap = stages.matched_filter.block_samples, stages.matched_filter.overlap_samples
+        x = matched_filter(z, front, block, overlap)
+    return x, carrier_step_hz(front, block)
+
+
+def _centre(spectra: Complex, apart: int, half_width: int, samples_a_symbol: float, wanted: bool) -> int:
+    """The carrier in bins; zero where the band's edges do not show it."""
+    if not wanted:
+        return 0
+    room = (1.0 - 1.0 / samples_a_symbol) / 2 * spectra.shape[-1] - 2 * half_width
+    reach = int(min(_CARRIER_REACH * apart, room))
+    if reach < 1:
+        return 0
+    centre, stands_out = clocks.coarse_frequency_offset(spectra, apart, half_width, reach)
+    return centre if stands_out > _CARRIER_STANDS_OUT else 0
+
+
+def _deskewed(
+    skews_s: tuple[float, ...], seen: list[tuple[float, float]], chain: Chain, figures: dict[str, float]
+) -> tuple[float, ...]:
+    """The skews to apply: what is believed, and what is seen beyond it if the chain says so and it is significant."""
+    corrected = list(skews_s)
+    for belief, skew_s in zip(chain.lanes, skews_s, strict=True):
+        figures[f"skew_{belief.name.lower()}_ps"] = 1e12 * skew_s
+    for p, (late_s, u_s) in enumerate(seen):
+        figures[f"residual_skew_{'xy'[p]}_ps"] = 1e12 * late_s
+        figures[f"residual_skew_{'xy'[p]}_u_ps"] = 1e12 * u_s
+        if chain.stages.deskew.residual == "correct" and abs(late_s) > 3 * u_s:
+            corrected[2 * p + 1] += late_s
+    return tuple(corrected)

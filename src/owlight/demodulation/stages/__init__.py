@@ -1,0 +1,1 @@
+"""The stages: plain functions on arrays. Figures are flat mappings whose names carry the unit."""
