@@ -61,7 +61,9 @@ def _print_sensitivity(found: Json, s: Json) -> None:
     print(f"  at BER {threshold['ber']:g} ({threshold['name']}); {s['method']}")
     for penalty in found["penalties"]:
         if penalty["group"] == s["group"]:
-            print(f"  {penalty['penalty_db']:.2f} dB above {penalty['reference']} ({penalty['reference_dbm']:.2f} dBm)")
+            side = "above" if penalty["penalty_db"] >= 0 else "below"
+            against = f"{penalty['reference']} ({penalty['reference_dbm']:.2f} dBm)"
+            print(f"  {abs(penalty['penalty_db']):.2f} dB {side} {against}")
     print()
 
 
