@@ -83,3 +83,9 @@ def test_condition_bits_have_their_weights() -> None:
     # SCPI-99 volume 1, chapter 9: settling weighs 2, measuring 16
     assert has_bit("2", Operation.SETTLING) and not has_bit("2", Operation.MEASURING)
     assert has_bit("+1.6E1", Operation.MEASURING)
+
+
+@pytest.mark.parametrize("answer", ["", "9.91E37", "-1", "1.5", "65536", "ON"])
+def test_what_is_no_register_has_no_bits(answer: str) -> None:
+    with pytest.raises(ValueError):
+        has_bit(answer, 1)

@@ -101,8 +101,9 @@ def wait_averaged(bench: OpenBench) -> None:
     if not bench.knows(AVERAGING):
         return
     window_s = bench.stands(AVERAGING)
-    if isinstance(window_s, float):
-        bench.clock.sleep(window_s)
+    if not isinstance(window_s, float):
+        raise InstrumentError("The power meter does not tell its averaging window. Look at it.", "power_meter")
+    bench.clock.sleep(window_s)
 
 
 def _floor_w(bench: OpenBench) -> float:

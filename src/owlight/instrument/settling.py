@@ -17,7 +17,17 @@ def wait_settled(role: str, settled: Settled, ask: Ask, clock: Clock) -> None:
     if settled.by == "wait":
         clock.sleep(settled.wait_s)
         return
-    if settled.by == "condition" and not _poll(settled, clock, lambda: not has_bit(ask(settled.query), settled.bit)):
+
+    def bit_is_off() -> bool:
+        answered = ask(settled.query)
+        try:
+            return not has_bit(answered, settled.bit)
+        except ValueError as error:
+            raise InstrumentError(
+                f"{role} answers {settled.query} with no register: {error}. Its driver file does not fit it.", role
+            ) from None
+
+    if settled.by == "condition" and not _poll(settled, clock, bit_is_off):
         raise InstrumentError(
             f"{role} did not settle within {settled.at_most_s:g} s ({settled.query}). "
             "Nothing is measured on it; look at the instrument, or allow more time in its driver file.",

@@ -4,6 +4,10 @@ from __future__ import annotations
 
 from enum import IntEnum
 
+from owlight.scpi.words import parse_number
+
+_HIGHEST = 65_535  # some instruments use bit 15 all the same
+
 
 class StandardEvent(IntEnum):
     """Standard event register, `*ESR?` (IEEE 488.2, 11.5.1)."""
@@ -32,8 +36,12 @@ class Operation(IntEnum):
 
 
 def has_bit(register: str, bit: int) -> bool:
-    """
+    """ValueError where the answer is no register: 16 bits, the highest never set (SCPI-99 volume 1, 9, from memory).
+
     >>> has_bit("+18", Operation.MEASURING), has_bit("2", Operation.MEASURING)
     (True, False)
     """
-    return bool(int(float(register)) >> bit & 1)
+    value = parse_number(register)
+    if value is None or not 0 <= value <= _HIGHEST or value != int(value):
+        raise ValueError(f"{register!r} is no register of at most 16 bits")
+    return bool(int(value) >> bit & 1)
