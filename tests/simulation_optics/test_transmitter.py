@@ -50,6 +50,12 @@ def test_long_record_keeps_its_timing():
     np.testing.assert_allclose(found[-50:-10], expected, atol=3e-3)  # the direct sum ends after 500 symbols
 
 
+def test_record_is_a_part_of_a_longer_one(ideal, settings):
+    """Were the waveform circular, its ends would depend on its length."""
+    short, long = (modulated(ideal, settings(), 3, 0.0, Instants(count, 80e9, 0))[0] for count in (8000, 20_000))
+    np.testing.assert_allclose(short, long[:8000], atol=3e-3)  # tails of pulses 256 symbols away
+
+
 @pytest.mark.parametrize("order", [7, 15, 31])
 def test_tributaries_follow_one_pattern(settings, order):
     s = settings(pattern_order=order, offsets=(0, 31, 64, 101))

@@ -19,6 +19,8 @@ Codes = npt.NDArray[np.int8]
 
 _LEAD_SAMPLES = 256
 """Samples before and after the record, so that the ends of the filtered block stay outside it."""
+_MOST_INSTANTS = 1 << 25
+"""A few gigabytes of fields; only a record far too slow for its light needs more."""
 
 
 def capture_codes(
@@ -42,6 +44,11 @@ def instants_of(world: World, s: LightSettings, planned_time_s: float) -> tuple[
     """
     sample_rate_hz = s.sample_rate_hz * (1.0 + 1e-6 * world.oscilloscope.clock_error_ppm)
     every = max(1, math.ceil(needed_rate_hz(world, s, planned_time_s) / sample_rate_hz - 1e-9))
+    if every * s.record_length > _MOST_INSTANTS:
+        raise ValueError(
+            f"{s.record_length} samples at {s.sample_rate_hz:g} a second need {every} instants of light each, "
+            f"{_MOST_INSTANTS} at most in all; take a shorter record or more samples a second"
+        )
     samples = next_fast_len(s.record_length + 2 * _LEAD_SAMPLES, real=True)
     return Instants(samples * every, sample_rate_hz * every, _LEAD_SAMPLES * every), every
 
