@@ -80,6 +80,14 @@ def test_second_bench_is_refused_by_serial_number(joined, join_with, tmp_path: P
     other.open(tmp_path).close()
 
 
+def test_private_simulation_is_not_locked(joined, tmp_path: Path) -> None:
+    """Each run has a simulated bench of its own, all with the same serial numbers."""
+    roles = {name: replace(role, resource="simulated socket") for name, role in joined.paper.role.items()}
+    joined.paper = replace(joined.paper, role=roles)
+    with joined.open(tmp_path):
+        assert list(tmp_path.iterdir()) == []
+
+
 def test_stale_lock_is_taken_and_noted(joined, tmp_path: Path) -> None:
     left = {"serial_number": "OWL-AT-0001", "resource": "there", "who": "night shift", "since": "yesterday"}
     (tmp_path / "OWL-AT-0001.lock").write_text(json.dumps(left | {"pid": 4_000_000, "host": socket.gethostname()}))

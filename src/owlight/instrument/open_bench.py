@@ -87,7 +87,8 @@ class OpenBench:
             identity = instrument.identify()
             self._prove(identity)
             lasting = identity.serial_number if identity.serial_number not in ("", "0") else identity.resource
-            if lasting not in held:  # one laser may serve as signal and local oscillator
+            # one laser may serve as signal and local oscillator; a bench that is simulated for this run is ours alone
+            if lasting not in held and not self.paper.role[role].resource.startswith("simulated "):
                 held[lasting] = role
                 self._lock(lock_folder, lasting, identity)
             self.identities += (identity,)
