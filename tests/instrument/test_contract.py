@@ -161,7 +161,7 @@ def test_light_has_settled_when_set_returns(joined: object) -> None:
 def test_entries_of_before_are_not_ours(joined: object) -> None:
     joined.simulated["signal_laser"].status.queue.push(-310, "from yesterday")
     instrument = joined.instrument("signal_laser")
-    instrument.identify()
+    instrument.take_over()
     assert instrument.set(Term("signal_laser", "power"), 5.0).within
     assert any("from yesterday" in getattr(event, "received", "") for event in joined.events)
 
@@ -169,7 +169,7 @@ def test_entries_of_before_are_not_ours(joined: object) -> None:
 def test_nothing_is_ever_reset_or_cleared(joined: object) -> None:
     for role in joined.drivers:
         instrument = joined.instrument(role)
-        instrument.identify()
+        instrument.take_over()
         for name in instrument.driver.setting:
             instrument.set(Term(role, name), VALUES[name][0])
     sent = " ".join(message for _, message in joined.heard)

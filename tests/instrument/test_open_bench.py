@@ -76,7 +76,7 @@ def test_second_bench_is_refused_by_serial_number(joined, join_with, tmp_path: P
             BenchError, match=r"OWL-SL-0001 is in use by .* \(process \d+\) since .*memory signal_laser"
         ):
             other.open(tmp_path)
-        assert commands(other) == []
+        assert [message for _, message in other.heard] == ["*IDN?"]  # not even the error queue is touched
     other.open(tmp_path).close()
 
 

@@ -38,12 +38,11 @@ class Instrument:
         self._prepared = False
 
     def identify(self) -> Identity:
-        """Who answers; then what the error queue still held is logged, so that it is not taken for ours."""
+        """Who answers; nothing but `*IDN?` is sent, since the instrument may be in somebody's use."""
         try:
             who = IdentityText.from_text(self.link.identity_text or self._ask("*IDN?"))
         except ValueError as error:
             raise InstrumentError(f"{self.role}: {error}. Look at the address.", self.role) from None
-        self._drain()
         return Identity(
             at=self._stamper.stamp(),
             role=self.role,
@@ -54,6 +53,10 @@ class Instrument:
             firmware=who.firmware,
             driver=self.driver.driver,
         )
+
+    def take_over(self) -> None:
+        """Empty the error queue into the record of exchanges, so that old entries are not taken for ours."""
+        self._drain()
 
     def set(self, term: Term, value: Value) -> Applied:
         """Command, completion, error queue, settling, read-back, comparison; the read-back is what counts from then."""

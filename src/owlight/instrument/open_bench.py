@@ -91,6 +91,7 @@ class OpenBench:
             if lasting not in held and not self.paper.role[role].resource.startswith("simulated "):
                 held[lasting] = role
                 self._lock(lock_folder, lasting, identity)
+            instrument.take_over()
             self.identities += (identity,)
             self.emit(identity)
         for term in FIELDS:
