@@ -160,8 +160,9 @@ def _launched(world: World, planned_time_s: float, block: Complex) -> Complex:
     angle = _wander_rad(world, "launch", planned_time_s)
     if angle == 0.0:
         return block
-    turn = np.array([[math.cos(angle), -math.sin(angle)], [math.sin(angle), math.cos(angle)]])
-    return np.asarray(turn @ block)
+    # written out: a linear algebra library may round differently with another number of threads
+    cosine, sine = math.cos(angle), math.sin(angle)
+    return np.stack([cosine * block[0] - sine * block[1], sine * block[0] + cosine * block[1]])
 
 
 def _rotated(world: World, planned_time_s: float, light: tuple[Complex, Complex], at: Instants) -> tuple[Complex, ...]:
