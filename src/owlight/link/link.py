@@ -196,7 +196,7 @@ class Link:
             raise
         if job.fault is not None:
             self._worker = None  # its thread closes the session and ends
-            return f"{type(job.fault).__name__}: {job.fault}"
+            return f"{type(job.fault).__name__}: {job.fault}".rstrip(".")
         return ""
 
     def _poison(self) -> None:
