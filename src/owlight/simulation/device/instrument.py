@@ -6,7 +6,7 @@ from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from typing import Protocol, TypeVar
 
-from owlight.simulation.device import common, parameters
+from owlight.simulation.device import common_commands, parameters
 from owlight.simulation.device.bench_time import BenchTime
 from owlight.simulation.device.entry import Answer, Call, Entry, only
 from owlight.simulation.device.errors import DeviceError
@@ -61,7 +61,7 @@ class Instrument:
         self.behaviour: Behaviour = _Nothing()
         self.power_up()
         self._tree: CommandTree[Entry] = CommandTree()
-        common.add_common(self, self._tree)
+        common_commands.add_common(self, self._tree)
         self._add_settings()
 
     def power_up(self) -> None:
