@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 import typer
 
 from owlight import __version__
@@ -30,7 +32,18 @@ def _main(
     pass
 
 
-for command in (measure.demo, files.forecast, measure.run, measure.reproduce, bench.simulate, bench.identify):
-    app.command()(command)
-for command in (bench.safe, offline.demodulate, curve_commands.logbook, curve_commands.show, curve_commands.report):
+_COMMANDS: tuple[Callable[..., None], ...] = (
+    measure.demo,
+    files.forecast,
+    measure.run,
+    curve_commands.show,
+    curve_commands.report,
+    measure.reproduce,
+    curve_commands.logbook,
+    bench.identify,
+    bench.safe,
+    bench.simulate,
+    offline.demodulate,
+)
+for command in _COMMANDS:
     app.command()(command)

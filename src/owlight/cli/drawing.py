@@ -25,7 +25,7 @@ def draw_curve(
     grid = [[" "] * WIDTH for _ in range(HEIGHT)]
 
     def column(power_dbm: float) -> int:
-        return round((power_dbm - low_dbm) / (high_dbm - low_dbm) * (WIDTH - 1))
+        return int(round((power_dbm - low_dbm) / (high_dbm - low_dbm) * (WIDTH - 1)))
 
     def row(ber: float) -> int:
         return round((top - math.log10(ber)) / (top - bottom) * (HEIGHT - 1))
