@@ -1,8 +1,9 @@
-"""Makes the environment that the hashed lock describes. Standard library only; parses on any Python 3.
+"""Makes the environment that the hashed lock describes. Standard library only; parses on any Python.
 
 The environment is .venv in the checkout, or one in the user's cache folder when the checkout cannot be written.
 The stamp that says "complete" is written last; a lock file keeps two starts at once from building over each other.
 """
+import errno
 import hashlib
 import os
 import shutil
@@ -12,19 +13,29 @@ import time
 
 LEAST = (3, 11)
 WAIT_S = 900.0
+BUSY = (errno.EAGAIN, errno.EACCES, errno.EDEADLK)
+NO_INSTALLER = "This Python can make an environment but has no pip to fill it: install pip or uv, then start again."
+NOT_INSTALLED = "The packages could not be installed; why stands above. Mend that (the network?), then start again."
 
 
 def ready_python(root, lock):
-    """The path of an interpreter in which everything named by `lock` is installed; exits with a sentence if none."""
+    """The path of an interpreter in which everything named by `lock` is installed; ends with a sentence if none."""
     if sys.version_info < LEAST:
         sys.exit("Owlight needs Python %d.%d or later; this is Python %d.%d." % (LEAST + tuple(sys.version_info[:2])))
+    # what lies in the user's folder, statistics.py for instance, must shadow nothing here nor in any child
+    os.environ["PYTHONSAFEPATH"] = "1"
+    wanted = stamp_of(root, lock)
+    local = os.path.join(root, ".venv")
+    if is_ready(local, wanted):
+        return interpreter(local)
     venv = place_of(root)
-    wanted = stamp_of(lock)
-    if has_stamp(venv, lock, wanted):
-        return interpreter(venv)
-    with Turn(venv + ".lock"):
-        if not has_stamp(venv, lock, wanted):  # another start may have built it while we waited
-            build(root, lock, venv, wanted)
+    try:
+        with Turn(venv + ".lock"):
+            if not is_ready(venv, wanted):  # another start may have built it while we waited
+                build(root, lock, venv)
+    except KeyboardInterrupt:
+        say("\nStopped. The environment is incomplete; the next start completes it.")
+        sys.exit(130)
     return interpreter(venv)
 
 
@@ -32,33 +43,46 @@ def place_of(root):
     """.venv in the checkout if it can be written, else in the user's cache folder, said on screen."""
     if os.access(root, os.W_OK):
         return os.path.join(root, ".venv")
-    base = os.environ.get("LOCALAPPDATA") or os.environ.get("XDG_CACHE_HOME")
-    base = base or os.path.join(os.path.expanduser("~"), ".cache")
-    name = "environment-" + hashlib.sha256(root.encode()).hexdigest()[:12]
-    venv = os.path.join(base, "owlight", name)
+    venv = os.path.join(user_cache(), "environment-" + hashlib.sha256(root.encode()).hexdigest()[:12])
     say("This checkout cannot be written, so the environment lies in " + venv)
     try:
-        os.makedirs(os.path.dirname(venv), exist_ok=True)
+        os.makedirs(user_cache(), exist_ok=True)
+        open(venv + ".lock", "a").close()
     except OSError as trouble:
-        sys.exit("Neither the checkout nor %s can be written (%s); set HOME to a folder of yours." % (base, trouble))
+        sys.exit("Neither the checkout nor your cache folder can be written (%s); set HOME to your own." % trouble)
     return venv
 
 
-def stamp_of(lock):
+def user_cache():  # type: () -> str
+    """The user's own cache folder for this program."""
+    if os.name == "nt":
+        base = os.environ.get("LOCALAPPDATA") or os.path.expanduser("~\\AppData\\Local")
+    elif sys.platform == "darwin":
+        base = os.path.expanduser("~/Library/Caches")
+    else:
+        base = os.environ.get("XDG_CACHE_HOME") or os.path.expanduser("~/.cache")
+    return os.path.join(base, "owlight")
+
+
+def stamp_of(root, lock):
+    """Names the kind of lock, and what an environment depends on: the lock, this Python and where the checkout lies.
+
+    A checkout that was moved or copied must not run the code of the place it came from.
+    """
     with open(lock, "rb") as file:
         text = file.read()
-    return hashlib.sha256(text + sys.version.encode()).hexdigest()
-
-
-def stamp_path(venv, lock):
-    """Two stamps: the test lock is a superset, so a folder's own stamp tells which lock is satisfied."""
     kind = "tests" if os.path.basename(os.path.dirname(lock)) == "tests" else "run"
-    return os.path.join(venv, "owlight-%s.stamp" % kind)
+    return kind + " " + hashlib.sha256(b"\0".join([text, sys.version.encode(), root.encode()])).hexdigest()
 
 
-def has_stamp(venv, lock, wanted):
+def stamp_path(venv, wanted):
+    """One stamp a kind of lock, so that a run does not need the test tools."""
+    return os.path.join(venv, "owlight-%s.stamp" % wanted.split()[0])
+
+
+def is_ready(venv, wanted):
     try:
-        with open(stamp_path(venv, lock)) as file:
+        with open(stamp_path(venv, wanted)) as file:
             return file.read() == wanted and os.path.exists(interpreter(venv))
     except OSError:
         return False
@@ -68,16 +92,16 @@ def interpreter(venv):
     return os.path.join(venv, "Scripts", "python.exe") if os.name == "nt" else os.path.join(venv, "bin", "python")
 
 
-def build(root, lock, venv, wanted):
-    say("Setting up the environment from %s (once, about half a minute) ..." % os.path.relpath(lock, root))
+def build(root, lock, venv):
+    say("Setting up the environment from %s, once; half a minute on a fast line ..." % os.path.relpath(lock, root))
     began = time.time()
     uv = shutil.which("uv")
     if not made_by_this_python(venv):
         make_venv(venv, uv)
+    forget_stamps(venv)
     install(lock, venv, uv)
     link_checkout(root, venv)
-    with open(stamp_path(venv, lock), "w") as file:
-        file.write(wanted)
+    write_stamps(root, lock, venv)
     say("Environment ready after %.0f s." % (time.time() - began))
 
 
@@ -86,35 +110,58 @@ def made_by_this_python(venv):
     if not os.path.exists(interpreter(venv)):
         return False
     code = "import sys; sys.exit(sys.version_info[:2] != %r)" % (tuple(sys.version_info[:2]),)
-    return subprocess.call([interpreter(venv), "-c", code]) == 0
+    return status_of([interpreter(venv), "-c", code]) == 0
 
 
 def make_venv(venv, uv):
     shutil.rmtree(venv, ignore_errors=True)
-    if uv:
-        run([uv, "venv", "--quiet", "--python", sys.executable, venv])
+    if uv and status_of([uv, "venv", "--quiet", "--python", sys.executable, venv]) == 0:
         return
+    command = [sys.executable, "-m", "venv", venv]
     try:
         import ensurepip  # noqa: F401
-        import venv as venv_module
-    except ImportError:
-        run([sys.executable, "-m", "venv", "--without-pip", venv])
-        return
-    venv_module.create(venv, with_pip=True)
+    except ImportError:  # some distributions leave it out
+        command.insert(3, "--without-pip")
+    if status_of(command) != 0:
+        sys.exit("This Python could not make an environment; why stands above. Mend that, then start again.")
+
+
+def forget_stamps(venv):
+    """Neither stamp is true while packages change, nor after: the other lock may be that of another commit."""
+    for kind in ("run", "tests"):
+        path = stamp_path(venv, kind)
+        if os.path.exists(path):
+            os.remove(path)
+
+
+def write_stamps(root, lock, venv):
+    """The test lock holds all of the run lock, so it earns both stamps."""
+    for satisfied in {lock, os.path.join(root, "requirements.lock")}:
+        wanted = stamp_of(root, satisfied)
+        with open(stamp_path(venv, wanted), "w") as file:
+            file.write(wanted)
 
 
 def install(lock, venv, uv):
     hashed = ["--require-hashes", "--only-binary", ":all:", "-r", lock]
+    python = interpreter(venv)
     if uv:
-        run([uv, "pip", "install", "--quiet", "--python", interpreter(venv)] + hashed)
-        return
-    quiet = ["install", "--quiet", "--disable-pip-version-check", "--no-input"] + hashed
-    if subprocess.call([interpreter(venv), "-c", "import pip"], stderr=subprocess.DEVNULL) == 0:
-        run([interpreter(venv), "-m", "pip"] + quiet)
-    elif subprocess.call([sys.executable, "-c", "import pip"], stderr=subprocess.DEVNULL) == 0:
-        run([sys.executable, "-m", "pip", "--python", interpreter(venv)] + quiet)
+        if status_of([uv, "pip", "install", "--quiet", "--python", python] + hashed) == 0:
+            return
+        say("uv could not install the packages; trying pip ...")
+    if has_pip(python):
+        pip = [python, "-m", "pip"]
+    elif has_pip(sys.executable):
+        pip = [sys.executable, "-m", "pip", "--python", python]
     else:
-        sys.exit("This Python has neither ensurepip nor pip; install pip or uv, then start again.")
+        sys.exit(NO_INSTALLER)
+    if status_of(pip + ["install", "--quiet", "--disable-pip-version-check", "--no-input"] + hashed) != 0:
+        sys.exit(NOT_INSTALLED)
+
+
+def has_pip(python):
+    code = "import importlib.util, sys; sys.exit(importlib.util.find_spec('pip') is None)"
+    return status_of([python, "-c", code]) == 0
 
 
 def link_checkout(root, venv):
@@ -125,9 +172,9 @@ def link_checkout(root, venv):
         file.write(os.path.join(root, "src") + "\n")
 
 
-def run(command):
-    if subprocess.call(command) != 0:
-        sys.exit("The environment could not be set up: the command above failed. Mend its cause, then start again.")
+def status_of(command):
+    """The one place that starts another program and waits for it."""
+    return subprocess.call(command)
 
 
 class Turn:
@@ -160,20 +207,12 @@ class Turn:
                 import fcntl
 
                 fcntl.flock(self.file, fcntl.LOCK_EX | fcntl.LOCK_NB)
-        except OSError:
-            return False
+        except OSError as trouble:
+            return trouble.errno not in BUSY  # a file system without locks: go on rather than never start
         return True
 
     def __exit__(self, *trouble):
         self.file.close()
-
-
-def call(command, root):
-    """Run a child that leaves no byte code behind in a checkout that cannot be written; its exit status."""
-    surroundings = dict(os.environ)
-    if not os.access(root, os.W_OK):
-        surroundings["PYTHONDONTWRITEBYTECODE"] = "1"
-    return subprocess.call(command, env=surroundings)
 
 
 def become(command):
@@ -184,8 +223,8 @@ def become(command):
         os.execv(command[0], command)
     import signal
 
-    signal.signal(signal.SIGINT, signal.SIG_IGN)
-    return subprocess.call(command)
+    signal.signal(signal.SIGINT, signal.SIG_IGN)  # the child decides what Ctrl-C means
+    return status_of(command)
 
 
 def started_as(argument):

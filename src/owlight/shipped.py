@@ -1,12 +1,15 @@
-"""Where shipped data and the user's caches lie: a TOML by path, then the lab's folder, then what came with the program."""
+"""Where shipped data and the user's caches lie: a TOML by path, then the lab's folder, then what came along."""
 
 from __future__ import annotations
 
+import atexit
 import difflib
 import os
-import sys
+import shutil
+import tempfile
 from pathlib import Path
 
+from owlight import _bootstrap
 from owlight.errors import InputError
 
 KINDS = ("drivers", "sequences", "simulated_instruments")
@@ -41,15 +44,24 @@ def find(kind: str, name: str, near: Path | None = None) -> Path:
 
 def user_cache() -> Path:
     """The user's own cache folder for this program; made by whoever writes to it."""
-    if sys.platform == "win32":
-        base = Path(os.environ.get("LOCALAPPDATA") or Path.home() / "AppData" / "Local")
-    elif sys.platform == "darwin":
-        base = Path.home() / "Library" / "Caches"
-    else:
-        base = Path(os.environ.get("XDG_CACHE_HOME") or Path.home() / ".cache")
-    return base / "owlight"
+    return Path(_bootstrap.user_cache())
 
 
 def numba_cache() -> None:
-    """Point the kernel cache at the user's own folder; never a shared one, since what lies there is executed."""
-    os.environ.setdefault("NUMBA_CACHE_DIR", str(user_cache() / "numba"))
+    """Say where compiled kernels are kept, before numba is imported: in the user's own folder.
+
+    Never in a shared place, since what lies there is executed. A user without a folder of his own gets a private one
+    that goes with the process; its children find it in their environment.
+    """
+    if "NUMBA_CACHE_DIR" in os.environ:
+        return
+    folder = user_cache() / "numba"
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+        writable = os.access(folder, os.W_OK)
+    except OSError:
+        writable = False
+    if not writable:
+        folder = Path(tempfile.mkdtemp(prefix="owlight-"))  # readable by its owner only
+        atexit.register(shutil.rmtree, folder, ignore_errors=True)
+    os.environ["NUMBA_CACHE_DIR"] = str(folder)
