@@ -106,7 +106,7 @@ def _fields(link: Link, sent: npt.NDArray[np.complex128], rng: np.random.Generat
         delay = np.exp(-2j * np.pi * f * link.symbol_rate_bd * link.group_delay_difference_s / 2)
         turned = _turn(angle) @ spectrum
         spectrum = np.stack([turned[0] * delay, turned[1] / delay])
-    x = fft.ifft(spectrum, axis=1) * np.sqrt(1.0)
+    x = fft.ifft(spectrum, axis=1)
     if link.noise_only:
         x *= 0
     t = np.arange(n) / rate_hz
@@ -136,10 +136,10 @@ def _lanes(
 ) -> tuple[list[npt.NDArray[np.int8]], float]:
     n, rate_hz = x.shape[1], link.symbol_rate_bd * OVERSAMPLING
     f = fft.fftfreq(n, 1 / rate_hz)
-    response = np.ones(n, dtype=complex)
+    response = (np.abs(f) < 0.49 * link.sample_rate_hz).astype(complex)  # no noise folds into the converter's band
     if link.bandwidth_hz is not None:
         b, a = signal.bessel(4, 2 * np.pi * link.bandwidth_hz, analog=True, norm="mag")
-        response = signal.freqs(b, a, 2 * np.pi * f)[1]
+        response *= signal.freqs(b, a, 2 * np.pi * f)[1]
     error, gain = np.radians(link.quadrature_deg), 10 ** (link.gain_db / 40)
     at = np.arange(int(n / OVERSAMPLING * link.sample_rate_hz / link.symbol_rate_bd) - 8) + 4.0
     at *= rate_hz / (link.sample_rate_hz * (1 + 1e-6 * link.clock_ppm))
@@ -149,28 +149,34 @@ def _lanes(
             delayed = response * np.exp(-2j * np.pi * f * link.skews_s[2 * p + lane])
             filtered = fft.ifft(fft.fft(wave) * delayed).real
             taken = interpolate.make_interp_spline(np.arange(n), filtered, k=3)(at)
-            codes.append(_digitised(taken, link.effective_bits, rng))
-            converter += _converter_share(taken, link, response, f) / x.shape[0]
+            if lane == 0:
+                full = 8 * float(np.std(taken))
+            codes.append(_digitised(taken / full, link.effective_bits, rng))
+            converter += _converter_share(full, link, response, f) / x.shape[0]
     return codes, converter
 
 
-def _digitised(volts: npt.NDArray[np.float64], effective_bits: float | None, rng: np.random.Generator):
-    """A range of eight standard deviations. IEEE Std 1241: E effective bits are a noise of (range / 2^E)^2 / 12."""
-    full = 8 * np.std(volts)
+def _digitised(filled: npt.NDArray[np.float64], effective_bits: float | None, rng: np.random.Generator):
+    """Codes of a lane that fills its range so much; eight standard deviations of I are the range of both lanes.
+
+    IEEE Std 1241: E effective bits are a noise of (range / 2^E)^2 / 12.
+    """
     if effective_bits is None:
-        return np.round(volts / full * 2**15).astype(np.int16)
+        return np.round(filled * 2**15).astype(np.int16)
     extra = (4.0 ** (8 - effective_bits) - 1) / 12
-    noisy = volts / full * 256 + rng.standard_normal(len(volts)) * np.sqrt(extra)
+    noisy = filled * 256 + rng.standard_normal(len(filled)) * np.sqrt(extra)
     return np.clip(np.round(noisy), -128, 127).astype(np.int8)
 
 
-def _converter_share(volts: npt.NDArray[np.float64], link: Link, response, f) -> float:
+def _converter_share(full: float, link: Link, response, f) -> float:
     """Converter noise of one lane in N0 over Es, as a filter that undoes the bandwidth would see it."""
     if link.effective_bits is None:
         return 0.0
-    density = (8 * np.std(volts)) ** 2 / 4**link.effective_bits / 12 / link.sample_rate_hz
+    density = full**2 / 4**link.effective_bits / 12 / link.sample_rate_hz
     shape = _root_raised_cosine(f / link.symbol_rate_bd, link.rolloff) ** 2
-    return float(density * link.symbol_rate_bd * np.sum(shape / np.abs(response) ** 2) / np.sum(shape))
+    inside = shape > 0
+    seen = np.sum(shape[inside] / np.abs(response[inside]) ** 2) / np.sum(shape)
+    return float(density * link.symbol_rate_bd * seen)
 
 
 @pytest.fixture(scope="session")

@@ -13,13 +13,15 @@ if TYPE_CHECKING:
     from owlight.demodulation.stages.counting import count, generalised_mutual_information, signal_to_noise
     from owlight.demodulation.stages.equaliser import blind_taps, equalise, least_squares_taps
     from owlight.demodulation.stages.front import Front, block_lengths, matched_filter
-    from owlight.demodulation.stages.lanes import block_spectra, deskew, orthonormalise, residual_skew, scale
+    from owlight.demodulation.stages.image import Imbalance, imbalances
+    from owlight.demodulation.stages.lanes import block_spectra, deskew, orthonormalise, scale
     from owlight.demodulation.stages.synchronisation import Alignment, synchronise
 
 _HOMES = {
     "chain": ("Chain", "LaneBelief", "make_chain"),
     "journey": ("demodulate",),
-    "stages.lanes": ("block_spectra", "deskew", "orthonormalise", "residual_skew", "scale"),
+    "stages.image": ("Imbalance", "imbalances"),
+    "stages.lanes": ("block_spectra", "deskew", "orthonormalise", "scale"),
     "stages.clock": ("ClockEstimate", "band_edges", "coarse_frequency_offset", "recover_clock"),
     "stages.front": ("Front", "block_lengths", "matched_filter"),
     "stages.equaliser": ("blind_taps", "equalise", "least_squares_taps"),
@@ -44,8 +46,9 @@ __all__ = [
     "block_spectra",
     "scale",
     "deskew",
-    "residual_skew",
     "orthonormalise",
+    "Imbalance",
+    "imbalances",
     "band_edges",
     "coarse_frequency_offset",
     "ClockEstimate",

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import numpy.typing as npt
@@ -11,10 +11,11 @@ from owlight.demodulation.chain import Chain
 from owlight.demodulation.journal import Journal, NoLockError
 from owlight.demodulation.lane_map import Pairing, alignment_figures, alignment_words, insist, pairings
 from owlight.demodulation.stages import clock as clocks
-from owlight.demodulation.stages.carrier import carrier_phase, frequency_offset
+from owlight.demodulation.stages.carrier import carrier_phase, decide, frequency_offset
 from owlight.demodulation.stages.equaliser import SINGULAR, blind_taps, equalise, least_squares_taps
 from owlight.demodulation.stages.front import Front, carrier_step_hz, matched_filter
-from owlight.demodulation.stages.lanes import block_spectra, orthonormalise, residual_skew
+from owlight.demodulation.stages.image import Imbalance, imbalances
+from owlight.demodulation.stages.lanes import block_spectra, orthonormalise
 from owlight.demodulation.stages.synchronisation import Alignment, Reference, synchronise
 
 Complex = npt.NDArray[np.complex64]
@@ -22,31 +23,43 @@ LEAST_SYMBOLS = 2000
 _CARRIER_REACH = 0.25
 """How far from zero the carrier is looked for, in symbol rates."""
 _CARRIER_STANDS_OUT = 1.5
+_SIGNIFICANT = 4.0
+"""Standard uncertainties beyond which a skew is corrected; closer to zero a correction would only add noise."""
+_HARMLESS_SYMBOLS = 0.01
 
 
 @dataclass(frozen=True)
 class Acquired:
-    """`x` at two samples a symbol; `turn` is the carrier's in radians a symbol; symbols before `trained` taught."""
+    """`x` at two samples a symbol; `turn` is the carrier's in radians a symbol; symbols before `trained` taught.
+
+    `moved` is how far the front moved the carrier, in radians a sample of x.
+    """
 
     x: Complex
     taps: Complex
     turn: float
+    moved: float
     trained: int
     alignment: Alignment
     words: str
+    imbalances: list[Imbalance]
 
 
 def acquire(z: Complex, sample_rate_hz: float, chain: Chain, reference: Reference, journal: Journal) -> Acquired:
-    """Try the lanes as believed, then every other way in which they can make polarisations; NoLockError if none works."""
+    """Try the lanes as believed, then every other way to make polarisations of them; NoLockError if none works."""
     tried = pairings(2 * len(z), chain.stages.synchronisation.permute_lanes)
     first: tuple[Journal, NoLockError] | None = None
     for pairing in tried:
         attempt = Journal()
+        believed = tuple(chain.lanes[lane].skew_s * chain.stages.deskew.believed for lane in pairing.order)
         try:
-            found = _train(z, sample_rate_hz, pairing, chain, reference, attempt)
+            found = _train(pairing, z, (sample_rate_hz, believed), chain, reference, attempt)
         except NoLockError as trouble:
             first = first or (attempt, trouble)
             continue
+        corrected = _corrected(believed, found.imbalances, chain)
+        if corrected != believed:
+            found = _train(pairing, z, (sample_rate_hz, corrected), chain, reference, attempt)
         journal.take_over(attempt)
         return found
     assert first is not None
@@ -54,12 +67,29 @@ def acquire(z: Complex, sample_rate_hz: float, chain: Chain, reference: Referenc
     raise NoLockError(str(first[1]) + (f" ({len(tried)} pairings of the lanes tried)" if len(tried) > 1 else ""))
 
 
+def _corrected(skews_s: tuple[float, ...], seen: list[Imbalance], chain: Chain) -> tuple[float, ...]:
+    """Skews with what was seen beyond them, where it is significant and would cost anything."""
+    corrected = list(skews_s)
+    for p, one in enumerate(seen):
+        worth = max(_SIGNIFICANT * one.skew_u_s, _HARMLESS_SYMBOLS / chain.signal.symbol_rate_bd)
+        if chain.stages.deskew.residual == "correct" and abs(one.skew_s) > worth:
+            corrected[2 * p + 1] += one.skew_s
+    return tuple(corrected)
+
+
 def _train(
-    z: Complex, sample_rate_hz: float, pairing: Pairing, chain: Chain, reference: Reference, journal: Journal
+    pairing: Pairing,
+    z: Complex,
+    rate_and_skews: tuple[float, tuple[float, ...]],
+    chain: Chain,
+    reference: Reference,
+    journal: Journal,
 ) -> Acquired:
-    believed = chain.stages.deskew.believed
-    skews_s = tuple(chain.lanes[lane].skew_s if believed else 0.0 for lane in pairing.order)
-    x, step_hz = _front(pairing.apply(z), sample_rate_hz, skews_s, chain, journal)
+    names = tuple(belief.name for belief in chain.lanes)
+    with journal.stage("deskew") as figures:
+        for lane, skew_s in zip(pairing.order, rate_and_skews[1], strict=True):
+            figures[f"skew_{names[lane].lower()}_ps"] = 1e12 * skew_s
+    x, step_hz = _front(pairing.apply(z), *rate_and_skews, chain, journal)
     trained = _training_symbols(x.shape[1] // 2, chain)
     taps, turn = _blind(x, trained, step_hz, chain, journal)
     settings, window = chain.stages.equaliser, chain.stages.carrier_phase.window_symbols
@@ -70,14 +100,37 @@ def _train(
         coefficients = taps.shape[1] * taps.shape[2]
         figures |= {**found, "trained_symbols": float(trained), "trained_symbols_a_coefficient": trained / coefficients}
     with journal.stage("carrier phase"):
-        y *= np.exp(-1j * carrier_phase(y, window)).astype(np.complex64)
+        phase = carrier_phase(y, window)
+        y *= np.exp(-1j * phase).astype(np.complex64)
     with journal.stage("synchronisation") as figures:
         alignment = synchronise(y, reference, chain.stages.synchronisation.lag_tolerance_symbols)
         figures |= alignment_figures(alignment, chain, reference)
         insist(alignment, chain)
-    names = [belief.name for belief in chain.lanes]
-    told = [words for words in (pairing.words.format(*names), alignment_words(alignment, chain)) if words]
-    return Acquired(x, taps, turn, trained, alignment, "; ".join(told))
+    told = (pairing.words(names, all(alignment.conjugated)), alignment_words(alignment, chain))
+    moved = np.pi * step_hz / chain.signal.symbol_rate_bd
+    acquired = Acquired(x, taps, turn, moved, trained, alignment, "; ".join(w for w in told if w), [])
+    return replace(acquired, imbalances=seen_imbalances(acquired, y, phase, chain, journal))
+
+
+def seen_imbalances(
+    acquired: Acquired, y: Complex, phase: npt.NDArray[np.float64], chain: Chain, journal: Journal
+) -> list[Imbalance]:
+    """What is left between I and Q, from the symbols y as decided (from symbol 0, their carrier's phase taken out)."""
+    with journal.stage("deskew") as figures:
+        turning = np.exp(1j * (phase + acquired.turn * np.arange(y.shape[1]))).astype(np.complex64)
+        middle = acquired.taps.shape[2] // 2
+        seen = imbalances(acquired.x[:, middle:], decide(y) * turning, acquired.moved, chain.signal.symbol_rate_bd)
+        for key, one in zip("xy", seen, strict=False):
+            figures[f"residual_skew_{key}_ps"] = 1e12 * one.skew_s
+            figures[f"residual_skew_{key}_u_ps"] = 1e12 * one.skew_u_s
+    with journal.stage("orthonormalisation") as figures:
+        for key, one in zip("xy", seen, strict=False):
+            applied = figures.get(f"applied_quadrature_{key}_deg", 0.0), figures.get(f"applied_gain_{key}_db", 0.0)
+            figures[f"quadrature_error_{key}_deg"] = applied[0] + one.quadrature_error_deg
+            figures[f"quadrature_error_{key}_u_deg"] = one.quadrature_error_u_deg
+            figures[f"gain_imbalance_{key}_db"] = applied[1] + one.gain_i_over_q_db
+            figures[f"gain_imbalance_{key}_u_db"] = one.gain_u_db
+    return seen
 
 
 def _training_symbols(symbols: int, chain: Chain) -> int:
@@ -133,18 +186,15 @@ def _front(
         largest_ppm = stages.clock_recovery.largest_offset_ppm if stages.clock_recovery.on else 0.0
         found = clocks.recover_clock(edges, length, nominal, largest_ppm)
         figures |= {"clock_offset_ppm": found.clock_offset_ppm, "clock_quality": found.quality}
-    with journal.stage("deskew") as figures:
-        rates = (sample_rate_hz, signal.symbol_rate_bd)
-        seen = residual_skew(spectra, skews_s, rates, half_width + abs(centre), found.turn_a_block)
-        skews_s = _deskewed(skews_s, seen, chain, figures)
     with journal.stage("orthonormalisation") as figures:
         highest_hz = (1 + signal.rolloff) / 2 * signal.symbol_rate_bd + abs(centre_hz)
         try:
             matrices, errors = orthonormalise(spectra, skews_s, sample_rate_hz, highest_hz)
         except ValueError as trouble:
             raise NoLockError(str(trouble)) from trouble
-        figures |= errors
-        if not stages.orthonormalisation.on:
+        if stages.orthonormalisation.on:
+            figures |= errors
+        else:
             matrices = np.broadcast_to(np.eye(2), matrices.shape)
     with journal.stage("matched filter") as figures:
         front = Front(sample_rate_hz, signal.symbol_rate_bd, signal.rolloff, skews_s, matrices, centre_hz, found)
@@ -163,18 +213,3 @@ def _centre(spectra: Complex, apart: int, half_width: int, samples_a_symbol: flo
         return 0
     centre, stands_out = clocks.coarse_frequency_offset(spectra, apart, half_width, reach)
     return centre if stands_out > _CARRIER_STANDS_OUT else 0
-
-
-def _deskewed(
-    skews_s: tuple[float, ...], seen: list[tuple[float, float]], chain: Chain, figures: dict[str, float]
-) -> tuple[float, ...]:
-    """The skews to apply: what is believed, and what is seen beyond it if the chain says so and it is significant."""
-    corrected = list(skews_s)
-    for belief, skew_s in zip(chain.lanes, skews_s, strict=True):
-        figures[f"skew_{belief.name.lower()}_ps"] = 1e12 * skew_s
-    for p, (late_s, u_s) in enumerate(seen):
-        figures[f"residual_skew_{'xy'[p]}_ps"] = 1e12 * late_s
-        figures[f"residual_skew_{'xy'[p]}_u_ps"] = 1e12 * u_s
-        if chain.stages.deskew.residual == "correct" and abs(late_s) > 3 * u_s:
-            corrected[2 * p + 1] += late_s
-    return tuple(corrected)

@@ -40,10 +40,13 @@ class ScalingSettings:
 
 @dataclass(frozen=True)
 class DeskewSettings:
-    """`believed`: apply the bench's skews. `residual`: "report" what is seen beyond them, or "correct" it too."""
+    """`believed`: apply the bench's skews. `residual`: "report" what is seen beyond them, or "correct" it too.
+
+    Only what is significant is corrected, by the training symbols, of which none is counted.
+    """
 
     believed: bool = True
-    residual: str = "report"
+    residual: str = "correct"
 
 
 @dataclass(frozen=True)

@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from owlight.demodulation.acquisition import Acquired, acquire, steady
+from owlight.demodulation.acquisition import Acquired, acquire, seen_imbalances, steady
 from owlight.demodulation.chain import Chain
 from owlight.demodulation.journal import Journal, NoLockError
 from owlight.demodulation.lane_map import TRIBUTARIES
@@ -112,6 +112,7 @@ def _held_out(acquired: Acquired, chain: Chain, journal: Journal) -> tuple[Compl
             "linewidth_hz": linewidth(phase, window) * chain.signal.symbol_rate_bd,
             "window_symbols": float(window),
         }
+    seen_imbalances(acquired, y, phase, chain, journal)
     return y, np.flatnonzero(counted)
 
 

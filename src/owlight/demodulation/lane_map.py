@@ -18,45 +18,40 @@ TRIBUTARIES = {1: ("I", "Q"), 2: ("XI", "XQ", "YI", "YQ")}
 
 @dataclass(frozen=True)
 class Pairing:
-    """Which lanes belong together, whether the second polarisation is mirrored against the first, and that in words."""
+    """Which lanes belong together, and whether the second polarisation is mirrored against the first."""
 
     order: tuple[int, ...]
     mirrored: bool = False
-    words: str = ""
 
     def apply(self, z: Complex) -> Complex:
         """The same lanes made into polarisations this way."""
-        if not self.words:
+        if not self.mirrored and self.order == tuple(range(len(self.order))):
             return z
         lanes = [part for polarisation in z for part in (polarisation.real, polarisation.imag)]
         second = lanes[self.order[2]] + (-1j if self.mirrored else 1j) * lanes[self.order[3]]
         return np.stack([lanes[self.order[0]] + 1j * lanes[self.order[1]], second]).astype(np.complex64)
 
-
-_ONE_MIRRORED = "within one polarisation I and Q are exchanged or one is inverted"
-_PAIRINGS_OF_FOUR = (
-    Pairing((0, 1, 2, 3)),
-    Pairing((0, 1, 2, 3), True, f"not as the bench has it: {_ONE_MIRRORED}"),
-    Pairing((0, 2, 1, 3), False, "not as the bench has it: {0} with {2} and {1} with {3} make a polarisation"),
-    Pairing(
-        (0, 2, 1, 3),
-        True,
-        f"not as the bench has it: {{0}} with {{2}} and {{1}} with {{3}} belong together, and {_ONE_MIRRORED}",
-    ),
-    Pairing((0, 3, 2, 1), False, "not as the bench has it: {0} with {3} and {2} with {1} make a polarisation"),
-    Pairing(
-        (0, 3, 2, 1),
-        True,
-        f"not as the bench has it: {{0}} with {{3}} and {{2}} with {{1}} belong together, and {_ONE_MIRRORED}",
-    ),
-)
+    def words(self, lanes: tuple[str, ...], all_mirrored: bool) -> str:
+        """What is not as the bench has it; "" if nothing."""
+        pairs = [tuple(lanes[n] for n in self.order[k : k + 2]) for k in range(0, len(self.order), 2)]
+        told = []
+        if self.order != tuple(range(len(self.order))):
+            told.append(
+                " and ".join(f"{a} with {b}" for a, b in pairs) + " make a polarisation, not as the bench has it"
+            )
+        for number, (a, b) in enumerate(pairs):
+            if all_mirrored != (self.mirrored and number == 1):
+                told.append(f"{a} and {b} are exchanged, or one of them is inverted")
+        return "; ".join(told)
 
 
 def pairings(lanes: int, permute: bool) -> tuple[Pairing, ...]:
     """As believed first; the equaliser and the synchronisation take every other exchange and inversion themselves."""
     if lanes == 2:
         return (Pairing((0, 1)),)
-    return _PAIRINGS_OF_FOUR if permute else _PAIRINGS_OF_FOUR[:1]
+    orders = ((0, 1, 2, 3), (0, 2, 1, 3), (0, 3, 2, 1))
+    every = tuple(Pairing(order, mirrored) for order in orders for mirrored in (False, True))
+    return every if permute else every[:1]
 
 
 def alignment_figures(alignment: Alignment, chain: Chain, reference: Reference) -> dict[str, float]:
@@ -114,8 +109,7 @@ def alignment_words(alignment: Alignment, chain: Chain) -> str:
     if any({e // 2 for e in pair} != {pair[0] // 2} for pair in pairs):
         carried = " and ".join("with ".join(f"{names[e]} " for e in pair).strip() for pair in pairs)
         told.append(f"tributaries of different polarisations arrive together: {carried}")
-    if all(alignment.conjugated):
-        told.append("the spectrum is mirrored: I and Q are exchanged or one is inverted in every polarisation")
-    elif any(alignment.conjugated):
-        told.append("one polarisation was sent or received mirrored: I and Q exchanged or one inverted")
+    if any(alignment.conjugated) and not all(alignment.conjugated):
+        mirrored = pairs[alignment.conjugated.index(True)]
+        told.append(f"{' and '.join(names[e] for e in sorted(mirrored))} were sent exchanged, or one of them inverted")
     return "; ".join(told)

@@ -5,9 +5,13 @@ from __future__ import annotations
 import os
 import signal
 import threading
+from typing import TYPE_CHECKING
 
-from owlight.vocabulary.captures import Capture, Demodulation
+if TYPE_CHECKING:
+    from owlight.vocabulary.captures import Capture, Demodulation
 
+# inherited by the spawned process before it loads numpy: on small matrices two threads only wait for each other
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
 _WATCH_S = 1.0
 
 

@@ -79,13 +79,14 @@ def orthonormalise(
     quadrature error.
 
     I. Fatadin, S. J. Savory, D. Ives, IEEE Photonics Technology Letters 20(20), 1733, 2008.
-    Figures: quadrature error (the angle between I and Q beyond 90 degrees) and gain of I over Q.
+    Figures: quadrature error (the angle between I and Q beyond 90 degrees) and gain of I over Q, as corrected; noise
+    that the lanes do not share dilutes the first.
 
     >>> rng = np.random.default_rng(1)
     >>> i, ideal = rng.standard_normal((2, 65536))
     >>> z = (i + 1j * (np.cos(np.radians(93)) * i + np.sin(np.radians(93)) * ideal)).astype(np.complex64)[None, :]
     >>> _, figures = orthonormalise(block_spectra(z, 1024), [0.0, 0.0], 1.0, 0.5)
-    >>> round(figures["quadrature_error_x_deg"])
+    >>> round(figures["applied_quadrature_x_deg"])
     3
     """
     length = spectra.shape[-1]
@@ -105,36 +106,6 @@ def orthonormalise(
         across = 1.0 / np.sqrt(1.0 - correlation**2)
         gain_i, gain_q = np.sqrt(0.5 / power_i[p]), np.sqrt(0.5 / power_q[p])
         matrices[p] = [[gain_i, 0.0], [-correlation * across * gain_i, across * gain_q]]
-        figures[f"quadrature_error_{key}_deg"] = float(-np.degrees(np.arcsin(correlation)))
-        figures[f"gain_imbalance_{key}_db"] = float(10 * np.log10(power_i[p] / power_q[p]))
+        figures[f"applied_quadrature_{key}_deg"] = float(-np.degrees(np.arcsin(correlation)))
+        figures[f"applied_gain_{key}_db"] = float(10 * np.log10(power_i[p] / power_q[p]))
     return matrices, figures
-
-
-def residual_skew(
-    spectra: Complex, skews_s: npt.ArrayLike, rates: tuple[float, float], half_width: int, turn_a_block: float
-) -> list[tuple[float, float]]:
-    """How much later Q arrives than I beyond `skews_s`, and its standard uncertainty, in seconds, each polarisation.
-
-    The symbol clock stands in each lane as a correlation of its two band edges, with the lane's delay in its phase.
-    `rates` are sample rate in Hz and symbol rate in Bd; `half_width` is that of the edges in bins; `turn_a_block` the
-    phase in radians by which the clock moves on from block to block. The uncertainty is what noise alone gives.
-    """
-    length, blocks = spectra.shape[-1], spectra.shape[1]
-    apart = round(rates[1] / rates[0] * length)
-    upper = np.arange(apart - apart // 2 - half_width, apart - apart // 2 + half_width + 1)
-    around = 2 * np.pi * apart / length * rates[0]
-    skews = np.asarray(skews_s, dtype=np.float64).reshape(-1, 2)
-    steady = np.exp(-1j * turn_a_block * np.arange(blocks))
-    above, below = lane_spectra(spectra, upper), lane_spectra(spectra, upper - apart)
-    found = []
-    for p in range(len(spectra)):
-        angles, spread = [], 0.0
-        for lane in (0, 1):
-            tones = (above[lane][p] * np.conj(below[lane][p])).sum(axis=1) * steady
-            tone = complex(tones.mean())
-            noise = float(np.mean(np.abs(tones - tone) ** 2)) / blocks
-            spread += noise / (2 * abs(tone) ** 2) if abs(tone) > 0 else np.inf
-            angles.append(np.angle(tone) + around * skews[p, lane])
-        late = (angles[0] - angles[1] + np.pi) % (2 * np.pi) - np.pi
-        found.append((float(late / around), float(min(np.sqrt(spread), np.pi) / around)))
-    return found

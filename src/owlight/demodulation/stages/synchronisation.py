@@ -121,7 +121,7 @@ def synchronise(y: Complex, reference: Reference, tolerance_symbols: int) -> Ali
         least_peak=min(m.peak for m in matches),
         largest_second=max(m.second for m in matches),
         off_plan_symbols=off_plan,
-        conjugated=tuple(_mirrored(*matches[2 * q : 2 * q + 2]) for q in range(count // 2)),
+        conjugated=tuple(reference.planned and _mirrored(*matches[2 * q : 2 * q + 2]) for q in range(count // 2)),
         symbols=y.shape[1],
     )
 
