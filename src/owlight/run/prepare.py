@@ -26,6 +26,9 @@ def prepare(night: Night) -> None:
     wavelength = _first(plan, Term("signal_laser", "wavelength"))
     if wavelength is not None:
         night.bench.set_wavelength(float(wavelength))
+    lo_wavelength = _first(plan, Term("local_oscillator", "wavelength"))
+    if lo_wavelength is not None and lo_wavelength != wavelength:
+        night.bench.set(Term("local_oscillator", "wavelength"), lo_wavelength)
     if "power_meter" in night.bench.roles:
         night.bench.zero_meter()
     lo_laser_power = _first(plan, Term("local_oscillator", "power"))

@@ -41,7 +41,10 @@ class Oscilloscope:
     def _arm(self) -> None:
         if self._busy():
             raise DeviceError(-213)
-        self._lanes, self._new = self.light.record(), {1, 2, 3, 4}
+        try:
+            self._lanes, self._new = self.light.record(), {1, 2, 3, 4}
+        except ValueError as error:  # the optics know no such light, or no record so slow
+            raise DeviceError(-221, str(error)) from None
         action = self.instrument.file.action["arm"]
         self._due_s = self.instrument.time.now_s() + action.takes_s
         self.instrument.begin(action.takes_s, MEASURING, action.opc_waits)
