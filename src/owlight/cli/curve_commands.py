@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import json
+from pathlib import Path
+from typing import Annotated
 
 import typer
 
@@ -33,9 +35,17 @@ def show(run: Run = "last", logbook: Folder = LOGBOOK, as_json: Json = False) ->
         print_result(found, None)
 
 
-def report(run: Run = "last", logbook: Folder = LOGBOOK, as_json: Json = False) -> None:
+def report(
+    run: Run = "last",
+    logbook: Folder = LOGBOOK,
+    curve: Annotated[
+        Path | None, typer.Option("--curve", metavar="FILE", help="Write the curve alone, as SVG.")
+    ] = None,
+    as_json: Json = False,
+) -> None:
     """Write the run's report, one HTML page that stands alone."""
+    from owlight.jobs.report import curve_picture
     from owlight.jobs.report import report as write
 
-    page = write(logbook, run)
-    typer.echo(json.dumps({"report": str(page)}) if as_json else f"{page}")
+    written = write(logbook, run) if curve is None else curve_picture(logbook, run, curve)
+    typer.echo(json.dumps({"report" if curve is None else "curve": str(written)}) if as_json else f"{written}")
