@@ -17,7 +17,7 @@ def draw_curve(
     drawn = [p for p in points if p["received_power_dbm"] is not None]
     if not drawn:
         return "There is no point to draw."
-    powers = [p["received_power_dbm"] for p in drawn]
+    powers: list[float] = [p["received_power_dbm"] for p in drawn]
     low_dbm, high_dbm = min(powers) - 0.25, max(powers) + 0.25
     levels = [p["ber_high"] for p in drawn] + [p["ber"] or p["ber_high"] for p in drawn] + [threshold_ber or 0.0]
     top = math.log10(max(levels)) + 0.15
@@ -25,7 +25,7 @@ def draw_curve(
     grid = [[" "] * WIDTH for _ in range(HEIGHT)]
 
     def column(power_dbm: float) -> int:
-        return int(round((power_dbm - low_dbm) / (high_dbm - low_dbm) * (WIDTH - 1)))
+        return round((power_dbm - low_dbm) / (high_dbm - low_dbm) * (WIDTH - 1))
 
     def row(ber: float) -> int:
         return round((top - math.log10(ber)) / (top - bottom) * (HEIGHT - 1))
