@@ -71,7 +71,7 @@ def world_with(folder: Path, tap_error_db: float, scale_error_db: float, zero_er
 
 
 def errors_of_the_owner(bench: Bench, seed: int) -> tuple[float, float, float]:
-    """One draw of (tap error in dB, scale error in dB, zero error in W) from the bench file's standard uncertainties."""
+    """One draw of tap error (dB), scale error (dB) and zero error (W) from the bench file's standard uncertainties."""
     rng = np.random.default_rng([2026, seed])
     record, meter = bench.plane_minus_tap, bench.meter
     tap_db = math.hypot(record.standard_uncertainty_db, record.mating_u_db or 0.0)
@@ -144,7 +144,8 @@ def count(world: World, s: optics.LightSettings, chain: str, key: int, at: tuple
         s = replace(s, attenuation_db=s.attenuation_db + now_dbm - power_dbm)
     codes = optics.capture_codes(world, s, key, planned_time_s)
     lanes = tuple(
-        Lane(name, lane, range_v / 256, 0.0, 0.0, "") for name, lane, range_v in zip(LANES, codes, s.ranges_v, strict=True)
+        Lane(name, lane, range_v / 256, 0.0, 0.0, "")
+        for name, lane, range_v in zip(LANES, codes, s.ranges_v, strict=True)
     )
     capture = Capture(CaptureId(0, 1, 1), Stamp("", 0.0, 0), s.sample_rate_hz, lanes, key)
     found = worker.demodulate_text(capture, chain)
@@ -163,9 +164,9 @@ def truth_dbm(plan: Plan, s: optics.LightSettings, near_dbm: float, length_s: fl
         for offset_db in AROUND_DB:
             errors = bits = key = 0
             while errors < ERRORS:
-                times = rng.uniform(0.0, length_s, 20)
+                times = rng.uniform(0.0, length_s, 20).tolist()
                 asked = [
-                    pool.submit(count, world, s, plan.chain.text, 10**9 + 1000 * key + i, (near_dbm + offset_db, float(t)))
+                    pool.submit(count, world, s, plan.chain.text, 10**9 + 1000 * key + i, (near_dbm + offset_db, t))
                     for i, t in enumerate(times)
                 ]
                 key += 1
