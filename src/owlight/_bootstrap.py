@@ -26,9 +26,11 @@ def ready_python(root, lock):
     os.environ["PYTHONSAFEPATH"] = "1"
     wanted = stamp_of(root, lock)
     local = os.path.join(root, ".venv")
-    if is_ready(local, wanted):
-        return interpreter(local)
     venv = place_of(root)
+    for made in (local, venv):
+        if is_ready(made, wanted):
+            return interpreter(made)
+    prepare(venv, local)
     try:
         with Turn(venv + ".lock"):
             if not is_ready(venv, wanted):  # another start may have built it while we waited
@@ -40,17 +42,21 @@ def ready_python(root, lock):
 
 
 def place_of(root):
-    """.venv in the checkout if it can be written, else in the user's cache folder, said on screen."""
+    """.venv in the checkout if it can be written, else in the user's cache folder."""
     if os.access(root, os.W_OK):
         return os.path.join(root, ".venv")
-    venv = os.path.join(user_cache(), "environment-" + hashlib.sha256(root.encode()).hexdigest()[:12])
-    say("This checkout cannot be written, so the environment lies in " + venv)
+    return os.path.join(user_cache(), "environment-" + hashlib.sha256(root.encode()).hexdigest()[:12])
+
+
+def prepare(venv, local):
+    if venv == local:
+        return
+    say("This checkout cannot be written, so the environment goes to " + venv)
     try:
-        os.makedirs(user_cache(), exist_ok=True)
+        os.makedirs(os.path.dirname(venv), exist_ok=True)
         open(venv + ".lock", "a").close()
     except OSError as trouble:
         sys.exit("Neither the checkout nor your cache folder can be written (%s); set HOME to your own." % trouble)
-    return venv
 
 
 def user_cache():  # type: () -> str
