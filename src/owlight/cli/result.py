@@ -16,7 +16,8 @@ def print_result(found: Json, bench: str | None) -> None:
     """The run as `demo`, `run` and `show` give it."""
     mark = "  -  SIMULATED, not a measurement of hardware" if found["simulated"] else ""
     print(f"\n{found['sequence']}{mark}")
-    print(f"run {found['run_id']}: {found['state']}" + (f" ({found['reason']})" if found["reason"] else "") + "\n")
+    print(f"run {found['run_id']}: {found['state']}" + (f" ({found['reason']})" if found["reason"] else ""))
+    print(_stays(found) + "\n")
     threshold = found["threshold"]
     for group in dict.fromkeys(point["group"] for point in found["points"]):
         _print_curve(found, group, threshold["ber"] if threshold else None)
@@ -25,12 +26,20 @@ def print_result(found: Json, bench: str | None) -> None:
     print_findings(found["findings"])
     if found["safe_state"] is not None:
         print_safe_state(found["safe_state"])
+    elif found["state"] == "broken off":
+        print("Safe state: not recorded, because the program died; its guard wrote what it did to guard.jsonl.")
     elif found["state"] != "measuring":
         print("Safe state: nothing was set, so nothing was made safe.")
     print(f"\nlogbook  {found['logbook']}")
     if "report" in found:
         print(f"report   {found['report']}")
     _print_next(found, bench)
+
+
+def _stays(found: Json) -> str:
+    words = f"{found['stays_done']} of {found['stays_planned']} stays measured, {found['stays_failed']} failed"
+    missing = ", ".join(str(index) for index in found["missing"])
+    return words + (f"; without any stay: point {missing}" if missing else "")
 
 
 def _print_curve(found: Json, group: str, threshold_ber: float | None) -> None:
@@ -115,7 +124,10 @@ def print_runs(found: list[Json], folder: Path) -> None:
 def print_reproduction(found: Json) -> None:
     """Identical or not, and what differs."""
     if found["identical"]:
-        print(f"Identical: all {found['captures_compared']} captures are the same byte for byte.")
+        captures = f"all {found['captures_compared']} captures are the same byte for byte, "
+        print(
+            f"Identical: {captures if found['captures_compared'] else ''}all {found['readings_compared']} readings too."
+        )
     else:
         print(f"Not identical; {found['captures_compared']} captures compared, {found['captures_equal']} equal.")
     for line in found["differences"]:

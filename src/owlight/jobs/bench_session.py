@@ -49,13 +49,11 @@ def simulated_resources(bench: Bench, served: dict[str, dict[str, str]]) -> dict
     found: dict[str, str] = {}
     for name, role in bench.role.items():
         word, _, transport = role.resource.partition(" ")
-        if word != "simulated":
-            found[name] = role.resource
-        elif name in served and transport in served[name]:
+        if name in served and word == "simulated" and transport in served[name]:
             found[name] = served[name][transport]
         else:
             raise InputError(
-                f"role.{name}.resource {role.resource!r} is not served by the simulated bench. "
-                'Write "simulated hislip" or "simulated socket", and give the world an instrument for this role.'
+                f"role.{name}.resource {role.resource!r} is not served by the simulated bench, whose time is not ours. "
+                'Write "simulated hislip" or "simulated socket"; or leave out [simulation] where instruments are real.'
             )
     return found

@@ -3,12 +3,11 @@
 from __future__ import annotations
 
 import json
-import sys
 from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
 
-from owlight.errors import BenchError, StorageError
+from owlight.errors import BenchError, StopNow, StorageError
 from owlight.guard import Guard
 from owlight.instrument.open_bench import open_bench
 from owlight.jobs.bench_session import Surroundings, surroundings
@@ -24,7 +23,7 @@ from owlight.run.night import Night
 from owlight.run.runner import Outcome, run
 from owlight.run.waiting import Demodulator
 from owlight.vocabulary.captures import Capture
-from owlight.vocabulary.events import Emit, Event, Note, SegmentEnded, SegmentStarted
+from owlight.vocabulary.events import Emit, Event, Note, SafeState, SegmentEnded, SegmentStarted
 from owlight.vocabulary.plan import Plan
 
 GUARD_SILENCE_S = 60.0
@@ -78,10 +77,10 @@ def _night(
     stamper = Stamper(clock)
     emit = _emitter(plan, order, writer)
     try:
-        bench = open_bench(resolved.bench, resolved.drivers, around.resources, emit, clock, beat=clock.beat)
-    except BenchError as trouble:
-        return _not_opened(stamper, emit, trouble, guard, demodulator)
-    try:
+        try:
+            bench = open_bench(resolved.bench, resolved.drivers, around.resources, emit, clock, beat=clock.beat)
+        except (BenchError, StopNow) as trouble:
+            return _not_opened(stamper, emit, trouble)
         with bench:
             night = Night(
                 plan=plan,
@@ -104,17 +103,15 @@ def _longest_s(resolved: Resolved) -> float | None:
     return None if resolved.sequence is None else longest_unattended_s(resolved.bench, resolved.sequence)
 
 
-def _not_opened(
-    stamper: Stamper, emit: Emit, trouble: BenchError, guard: Guard, demodulator: Demodulator | None
-) -> Outcome:
+def _not_opened(stamper: Stamper, emit: Emit, trouble: BenchError | StopNow) -> Outcome:
     """No setting was sent, so there is nothing to make safe; the reason is kept with the run."""
-    guard.done()
-    if demodulator:
-        demodulator.close(at_once=True)
+    stopped = isinstance(trouble, StopNow)
+    state, reason = ("called off", "stopped by a person") if stopped else ("gave up", str(trouble))
     emit(SegmentStarted(stamper.stamp(), 1, "started"))
-    emit(Note(stamper.stamp(), "fault", str(trouble), getattr(trouble, "role", "")))
-    emit(SegmentEnded(stamper.stamp(), "gave up", str(trouble)))
-    return Outcome("gave up", str(trouble), None)
+    if not stopped:
+        emit(Note(stamper.stamp(), "fault", reason, getattr(trouble, "role", "")))
+    emit(SegmentEnded(stamper.stamp(), state, reason))
+    return Outcome(state, reason, None)
 
 
 def _emitter(plan: Plan, order: Order, writer: RunWriter) -> Emit:
@@ -124,20 +121,24 @@ def _emitter(plan: Plan, order: Order, writer: RunWriter) -> Emit:
         try:
             writer.record(event)
         except StorageError:
-            _last_words(order.folder, event)
+            _last_words(order, event)
+            if isinstance(event, SafeState):
+                order.show(plan, event)
             raise
         order.show(plan, event)
 
     return emit
 
 
-def _last_words(folder: Path, event: Event) -> None:
+def _last_words(order: Order, event: Event) -> None:
     if isinstance(event, Capture):
         return
     line = json.dumps({type(event).__name__: repr(event)})
-    print(f"not stored: {line}", file=sys.stderr)
+    place = order.folder / "last_words.jsonl"
     try:
-        with (folder / "last_words.jsonl").open("a", encoding="utf-8") as side:
+        with place.open("a", encoding="utf-8") as side:
             side.write(line + "\n")
     except OSError:
-        pass  # the disk that refused the logbook may refuse this too; the line is on the screen
+        order.say(f"not stored: {line}")  # the disk that refused the logbook refuses this too
+    else:
+        order.say(f"The logbook refused {type(event).__name__}; it is kept in {place}.")

@@ -14,8 +14,10 @@ from typing import Any
 from owlight.jobs.night import Order, measure
 from owlight.jobs.resolve import resolve, world_path
 from owlight.jobs.summary import summary
-from owlight.logbook.read import captures, open_reader, provenance, runs
+from owlight.logbook.read import captures, history, open_reader, provenance, runs
+from owlight.vocabulary.events import History
 from owlight.vocabulary.plan import Plan, Source
+from owlight.vocabulary.terms import TERMS
 from owlight.vocabulary.values import Identity
 
 Json = dict[str, Any]
@@ -30,6 +32,7 @@ class Stored:
     identities: tuple[Identity, ...]
     software: Mapping[str, str]
     hashes: Mapping[Any, str]
+    readings: Mapping[Any, float | None]
 
 
 def reproduce(run_text: str, bench: str | None, order: Order) -> Json:
@@ -68,23 +71,37 @@ def _stored(reader: Any, run_id: str) -> Stored:
         identities=tuple(provenance.identities(reader, run_id)),
         software=provenance.software(reader, run_id),
         hashes=captures.hashes(reader, run_id),
+        readings=_readings(history.history(reader, run_id)),
     )
+
+
+def _readings(finished: History) -> dict[Any, float | None]:
+    """Each reading by stay and place in it."""
+    return {
+        (stay.attempt.point.index, stay.attempt.number, place, str(reading.term)): reading.value
+        for stay in finished
+        for place, reading in enumerate(stay.readings)
+    }
 
 
 def _compared(folder: Path, first: str, second: str, before: Stored, after: Stored) -> Json:
     common = before.hashes.keys() & after.hashes.keys()
-    equal = [key for key in common if before.hashes[key] == after.hashes[key]]
-    whole = len(common) == len(before.hashes) == len(after.hashes)
     old, new = summary(folder, first), summary(folder, second)
     # a key is a capture and one of its lanes; people count captures
     counted = {key[0] for key in common}
     unequal = {key[0] for key in common if before.hashes[key] != after.hashes[key]}
+    same = before.hashes == after.hashes and before.readings == after.readings and old["points"] == new["points"]
     return {
         "reproduces": first,
-        "identical": bool(common) and whole and len(equal) == len(common) and old["points"] == new["points"],
+        "identical": same and bool(before.hashes or before.readings),
         "captures_compared": len(counted),
         "captures_equal": len(counted) - len(unequal),
-        "differences": [*_differences(before, after), *_different_results(old, new)],
+        "readings_compared": len(before.readings.keys() & after.readings.keys()),
+        "differences": [
+            *_differences(before, after),
+            *_different_readings(before, after),
+            *_different_results(old, new),
+        ],
         "sensitivity_original": old["sensitivity"],
         "sensitivity_reproduced": new["sensitivity"],
     }
@@ -125,6 +142,22 @@ def _changed_lines(before: Stored, after: Stored, kind: str, name: str) -> str:
 
 def _who(fields: tuple[str, ...] | None) -> str:
     return "absent" if fields is None else ", ".join(fields)
+
+
+def _different_readings(before: Stored, after: Stored) -> list[str]:
+    """How many readings differ, and the largest difference of each term."""
+    common = before.readings.keys() & after.readings.keys()
+    apart = [key for key in common if before.readings[key] != after.readings[key]]
+    if not apart:
+        return []
+    largest: dict[str, float] = {}
+    for key in apart:
+        was, now = before.readings[key], after.readings[key]
+        if was is not None and now is not None:
+            largest[key[-1]] = max(largest.get(key[-1], 0.0), abs(now - was))
+    units = {str(term): spec.unit for term, spec in TERMS.items()}
+    words = "; ".join(f"{term} by up to {value:.3g} {units.get(term, '')}" for term, value in sorted(largest.items()))
+    return [f"readings: {len(apart)} of {len(common)} differ: {words}"]
 
 
 def _different_results(old: Json, new: Json) -> list[str]:

@@ -6,20 +6,22 @@ from dataclasses import asdict
 from pathlib import Path
 from typing import Any
 
-from owlight.logbook.read import curve, open_reader, provenance, runs
+from owlight.logbook.read import curve, history, open_reader, provenance, runs
+from owlight.statistics import pool
+from owlight.vocabulary.events import History
 from owlight.vocabulary.plan import Plan
-from owlight.vocabulary.result import Conclusion, CurvePoint, Sensitivity
+from owlight.vocabulary.result import Conclusion, CurvePoint, Sensitivity, Stay
 
 Json = dict[str, Any]
 
 
 def summary(folder: Path, run_text: str = "last") -> Json:
-    """InputError when there is no such run. Every number in it was stored; nothing is computed anew."""
+    """InputError when there is no such run. A conclusion is what was stored, not computed anew."""
     with open_reader(folder) as reader:
         run_id = runs.find_run(reader, run_text)
         header = runs.header(reader, run_id)
         plan = provenance.plan(reader, run_id)
-        conclusion = curve.conclusion(reader, run_id)
+        conclusion = curve.conclusion(reader, run_id) or _so_far(plan, curve.stays(reader, run_id), header.state)
         return {
             "run_id": run_id,
             "logbook": str(folder / "logbook.db"),
@@ -31,10 +33,28 @@ def summary(folder: Path, run_text: str = "last") -> Json:
             "seed": plan.seed,
             "started_utc": header.started_utc,
             "ended_utc": header.ended_utc,
+            **_stays(plan, history.history(reader, run_id), header.planned_stays),
             **_measurand(plan),
             **_results(conclusion),
             "safe_state": _safe_state(runs.safe_state(reader, run_id)),
         }
+
+
+def _stays(plan: Plan, finished: History, planned: int) -> Json:
+    """`missing`: planned points that no stay measured. A point without lock was measured, and says so."""
+    measured = {stay.attempt.point.index for stay in finished if stay.outcome == "ok"}
+    return {
+        "stays_planned": planned,
+        "stays_done": sum(stay.outcome == "ok" for stay in finished),
+        "stays_failed": sum(stay.outcome != "ok" for stay in finished),
+        "missing": sorted({index for indices in plan.order for index in indices} - measured),
+    }
+
+
+def _so_far(plan: Plan, stays: tuple[Stay, ...], state: str) -> Conclusion:
+    """Of a run that has no conclusion: its counts, and no claim."""
+    points = pool(stays, plan.measurand.threshold_ber) if plan.measurand else ()
+    return Conclusion(points, (), (), (), (), f"The run is {state}: it has no conclusion.")
 
 
 def _measurand(plan: Plan) -> Json:
@@ -47,18 +67,7 @@ def _measurand(plan: Plan) -> Json:
     }
 
 
-def _results(conclusion: Conclusion | None) -> Json:
-    if conclusion is None:
-        return {
-            "points": [],
-            "sensitivity": None,
-            "sensitivities": [],
-            "penalty_db": None,
-            "penalty_reference": None,
-            "penalties": [],
-            "findings": [],
-            "words": "The run has no conclusion yet.",
-        }
+def _results(conclusion: Conclusion) -> Json:
     sensitivities = [_sensitivity(found) for found in conclusion.sensitivities]
     penalties = [asdict(penalty) for penalty in conclusion.penalties]
     return {

@@ -57,14 +57,19 @@ def _number(value: Value | None) -> float | None:
     return None if value is None else float(value)
 
 
-def wait_until(night: Night, condition: Condition) -> float:
-    """Wait at the stated settings until the reading is steady; the measured slope is noted, a time-out fails."""
+def wait_until(night: Night, condition: Condition) -> None:
+    """Wait at the stated settings until the reading is steady; the measured slope is noted, a time-out fails.
+
+    A person who asks to stop is not kept waiting: there is no point in hand yet.
+    """
     for setting in condition.at:
         _apply(night, setting)
     every_s = condition.over_s / _LEAST_READINGS
     began_s = night.clock.monotonic_s()
     readings: list[Reading] = []
     while night.clock.monotonic_s() - began_s <= condition.at_most_s:
+        if night.stop.level:
+            return
         readings.append(night.bench.read(condition.reading, phase="warm-up"))
         window = [r for r in readings if r.at.monotonic_s >= readings[-1].at.monotonic_s - condition.over_s]
         spans_s = window[-1].at.monotonic_s - window[0].at.monotonic_s
@@ -73,7 +78,7 @@ def wait_until(night: Night, condition: Condition) -> float:
             if abs(drift_db) + u_db < condition.drifts_less_than:
                 words = f"{condition.reading} drifts {drift_db:+.4f} dB (standard uncertainty {u_db:.4f} dB)"
                 night.emit(Note(night.stamper.stamp(), "info", f"{words} in {condition.over_s:g} s: steady."))
-                return drift_db
+                return
         night.clock.sleep(every_s)
     raise BenchError(
         f"{condition.reading} did not become steady within {condition.at_most_s:g} s; the bench is made safe. "

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from collections import deque
-from dataclasses import dataclass
+from contextlib import ExitStack
+from dataclasses import dataclass, field
 
 from owlight.errors import BenchError, StopNow
 from owlight.plan import next_attempt
@@ -26,59 +27,60 @@ class Outcome:
     safe_state: SafeState | None
 
 
-class _TooManyFailuresError(BenchError):
-    """Too many stays in a row gave nothing."""
-
-
 def run(night: Night, history: History = (), segment: int = 1) -> Outcome:
     """Measure until the plan has no next attempt, a person stops it, or the bench fails.
 
-    Every event is durable before the next step. Raises only what storage raises, after the bench was made safe.
+    Every event is durable before the next step. Raises what storage raises and what nobody foresaw, but only after
+    the bench was made safe.
     """
     night.emit(SegmentStarted(night.stamper.stamp(), segment, "resumed" if history else "started"))
-    waiting: deque[Stay] = deque()
-    state, reason, collect = "gave up", "an unexpected fault", True
+    loop = _Loop(list(history))
+    state, reason = "gave up", "an unexpected fault"
     try:
         prepare(night)
-        done = _measure(night, list(history), waiting)
+        done = _measure(night, loop)
         state, reason = ("finished", "every planned stay was taken") if done else ("called off", "stopped by a person")
     except StopNow:
-        state, reason, collect = "called off", "stopped at once by a person", False
+        state, reason = "called off", "stopped at once by a person"
     except BenchError as trouble:
         reason = str(trouble)
-        night.emit(Note(night.stamper.stamp(), "fault", reason, getattr(trouble, "role", "")))
+        loop.trouble = trouble
     finally:
-        safe = _end(night, waiting if collect else deque(), state, reason)
+        safe = _end(night, loop, state, reason)
     return Outcome(state, reason, safe)
 
 
-def _measure(night: Night, history: list[AttemptFinished], waiting: deque[Stay]) -> bool:
+@dataclass
+class _Loop:
+    """What the loop knows and has in hand."""
+
+    history: list[AttemptFinished]
+    waiting: deque[Stay] = field(default_factory=deque)
+    in_hand: Stay | None = None
+    trouble: BenchError | None = None
+
+
+def _measure(night: Night, loop: _Loop) -> bool:
     """True when the plan is exhausted, False when a person asked to stop after the point in hand."""
     failed_in_a_row = 0
     while night.stop.level == 0:
-        while len(waiting) > LAG:
-            finished = _collect(night, waiting)
-            history.append(finished)
+        while len(loop.waiting) > LAG:
+            finished = _collect(night, loop.waiting)
+            loop.history.append(finished)
             failed_in_a_row = failed_in_a_row + 1 if finished.outcome == "failed" else 0
             if failed_in_a_row >= MOST_FAILED_IN_A_ROW:
-                raise _TooManyFailuresError(
-                    f"{failed_in_a_row} stays in a row failed, the last because: {finished.reason}"
-                )
-        known = (*history, *(stay.placeholder() for stay in waiting))
+                raise BenchError(f"{failed_in_a_row} stays in a row failed, the last because: {finished.reason}")
+        known = (*loop.history, *(stay.placeholder() for stay in loop.waiting))
         attempt = next_attempt(night.plan, known)
-        if attempt is None and waiting:
-            history.append(_collect(night, waiting))
+        if attempt is None and loop.waiting:
+            loop.history.append(_collect(night, loop.waiting))
             continue
         if attempt is None:
             return True
-        stay = Stay(attempt, night.stamper.stamp())
-        try:
-            stay_at(night, stay)
-        except BenchError as trouble:
-            _drain(night, waiting)
-            night.emit(stay.failed(night.stamper.stamp(), str(trouble)))
-            raise
-        waiting.append(stay)
+        loop.in_hand = Stay(attempt, night.stamper.stamp())
+        stay_at(night, loop.in_hand)
+        loop.waiting.append(loop.in_hand)
+        loop.in_hand = None
     return False
 
 
@@ -90,19 +92,34 @@ def _collect(night: Night, waiting: deque[Stay]) -> AttemptFinished:
     return finished
 
 
-def _drain(night: Night, waiting: deque[Stay]) -> None:
-    while waiting:
-        _collect(night, waiting)
-
-
-def _end(night: Night, waiting: deque[Stay], state: str, reason: str) -> SafeState:
-    """Safe state first, then what still waits for its demodulation, then the record of both."""
+def _end(night: Night, loop: _Loop, state: str, reason: str) -> SafeState:
+    """The safe state first, then the record of it and of every stay begun: nothing measured is dropped."""
     night.clock.only_beat()
     safe = night.bench.make_safe()
-    try:
-        _drain(night, waiting)
-    except BenchError as trouble:
-        night.emit(Note(night.stamper.stamp(), "fault", str(trouble)))
-    night.emit(safe)
-    night.emit(SegmentEnded(night.stamper.stamp(), state, reason))
+    # each record is tried, whatever storage says of the others; an exit stack runs its last callback first
+    with ExitStack() as records:
+        records.callback(lambda: night.emit(SegmentEnded(night.stamper.stamp(), state, reason)))
+        if loop.in_hand is not None:
+            records.callback(_record_failed, night, loop.in_hand, reason)
+        for stay in reversed(loop.waiting):
+            records.callback(_record_or_give_up, night, stay)
+        if loop.trouble is not None:
+            fault = Note(night.stamper.stamp(), "fault", reason, getattr(loop.trouble, "role", ""))
+            records.callback(night.emit, fault)
+        records.callback(night.emit, safe)
     return safe
+
+
+def _record_failed(night: Night, stay: Stay, reason: str) -> None:
+    night.emit(stay.failed(night.stamper.stamp(), reason))
+
+
+def _record_or_give_up(night: Night, stay: Stay) -> None:
+    """Whoever asked for an end at once is not kept waiting for a demodulation; the capture is kept."""
+    if night.stop.level >= 2:
+        _record_failed(night, stay, "stopped by a person before its demodulation; its captures are kept")
+        return
+    try:
+        night.emit(stay.finished(night))
+    except BenchError as trouble:
+        _record_failed(night, stay, str(trouble))

@@ -10,7 +10,7 @@ from owlight.capture import check_capture
 from owlight.run.judge import judge_stay, wanted_power_dbm
 from owlight.run.night import Night
 from owlight.run.vertical import set_vertical
-from owlight.run.waiting import Waiting
+from owlight.run.waiting import DemodulationFailedError, Waiting
 from owlight.vocabulary.captures import CaptureId, Demodulation
 from owlight.vocabulary.events import AttemptFinished, Check, ReceivedPower
 from owlight.vocabulary.plan import Attempt
@@ -42,7 +42,10 @@ class Stay:
 
     def finished(self, night: Night) -> AttemptFinished:
         """Wait for the demodulations and judge the stay."""
-        demodulations = tuple(asked.result() for asked in self.waiting)
+        try:
+            demodulations = tuple(asked.result() for asked in self.waiting)
+        except DemodulationFailedError as trouble:
+            return self.failed(night.stamper.stamp(), str(trouble))
         self.checks += judge_stay(self.attempt, self.received_power, demodulations, night.plan, night.bench.paper)
         bad = [check for check in self.checks if check.finding == "bad" and check.subject.startswith("capture")]
         wanted = night.plan.capture is not None
@@ -51,7 +54,7 @@ class Stay:
         return self._finished(night.stamper.stamp(), "ok", "", demodulations)
 
     def failed(self, at: Stamp, reason: str) -> AttemptFinished:
-        self.seconds = at.monotonic_s - self.started.monotonic_s
+        self.seconds = self.seconds or at.monotonic_s - self.started.monotonic_s
         return self._finished(at, "failed", reason, ())
 
     def _finished(

@@ -10,10 +10,19 @@ from concurrent.futures.process import BrokenProcessPool
 from typing import Protocol
 
 from owlight.demodulation import worker
-from owlight.errors import BenchError
+from owlight.errors import BenchError, OwlightError
 from owlight.run.attended import SLICE_S
 from owlight.vocabulary.captures import Capture, Demodulation
 from owlight.vocabulary.plan import ChainText
+
+_ENDED = (
+    "The demodulation process ended unexpectedly; captures already taken are kept. "
+    "Look at free memory, then measure the missing points again."
+)
+
+
+class DemodulationFailedError(OwlightError):
+    """One capture broke its demodulation: that stay failed, the night goes on."""
 
 
 class Waiting(Protocol):
@@ -34,7 +43,10 @@ class Demodulator:
         self._pool.submit(worker.warm)  # starts the process and its kernels while the bench warms up
 
     def later(self, capture: Capture) -> Waiting:
-        return _Asked(self._pool.submit(worker.demodulate_text, capture, self._chain.text), self._beat)
+        try:
+            return _Asked(self._pool.submit(worker.demodulate_text, capture, self._chain.text), self._beat)
+        except BrokenProcessPool as trouble:
+            raise BenchError(_ENDED) from trouble
 
     def close(self, at_once: bool = False) -> None:
         self._pool.shutdown(wait=not at_once, cancel_futures=at_once)
@@ -52,7 +64,7 @@ class _Asked:
             except NotYet:
                 self._beat()
             except BrokenProcessPool as trouble:
-                raise BenchError(
-                    "The demodulation process ended unexpectedly; captures already taken are kept. "
-                    "Look at free memory, then measure the missing points again."
-                ) from trouble
+                raise BenchError(_ENDED) from trouble
+            except Exception as trouble:
+                words = f"the demodulation stopped with {type(trouble).__name__}: {trouble}; the capture is kept"
+                raise DemodulationFailedError(words) from trouble
