@@ -15,12 +15,27 @@ python3 src run SEQUENCE --bench B          measure
 python3 src report last                     one page to print or send
 python3 tests                               run the tests"""
 
-if __name__ == "__main__":
-    if len(sys.argv) == 1:
+
+def main(arguments):
+    if not arguments:
         print(WORDS)
-        sys.exit(0)
+        return 0
     root = os.path.dirname(HERE)
     python = _bootstrap.ready_python(root, os.path.join(root, "requirements.lock"))
     # so that the commands the program shows can be pasted as they are
     os.environ.setdefault("OWLIGHT_STARTED_AS", _bootstrap.started_as(sys.argv[0]))
-    sys.exit(_bootstrap.become([python, "-m", "owlight"] + sys.argv[1:]))
+    return _bootstrap.become([python, "-m", "owlight"] + arguments + place_for_demo(arguments))
+
+
+def place_for_demo(arguments):
+    """The demo can be tried in a folder that cannot be written: its logbook then goes to the home folder."""
+    named = any(word.split("=")[0] == "--logbook" for word in arguments)
+    if arguments[0] != "demo" or named or "--help" in arguments or os.access(os.getcwd(), os.W_OK):
+        return []
+    place = os.path.join(os.path.expanduser("~"), "owlight-demo")
+    _bootstrap.say("This folder cannot be written, so the logbook goes to " + place)
+    return ["--logbook", place]
+
+
+if __name__ == "__main__":
+    sys.exit(main(sys.argv[1:]))
