@@ -14,4 +14,4 @@ def fitted_ber(sensitivity: dict[str, Any], modulation: str, powers_dbm: Sequenc
 
     from owlight.report.fitted import fitted_ber as ber_of
 
-    return ber_of(Sensitivity(**sensitivity), modulation, np.asarray(powers_dbm)).tolist()
+    return [float(ber) for ber in ber_of(Sensitivity(**sensitivity), modulation, np.asarray(powers_dbm))]
