@@ -12,7 +12,7 @@ from owlight.vocabulary.values import Applied, Exchange, Identity, Reading, Stam
 
 @dataclass(frozen=True)
 class Check:
-    """A trust check's answer. `finding`: ok, doubtful, bad or not evaluated. `subject`: run, "point 3", "capture 3/1/1"."""
+    """A trust check's answer; finding: ok, doubtful, bad, not evaluated; subject: run, "point 3", "capture 3/1/1"."""
 
     name: str
     subject: str
