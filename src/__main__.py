@@ -2,7 +2,7 @@
 import os
 import sys
 
-HERE = os.path.dirname(os.path.abspath(__file__))
+HERE = os.path.dirname(os.path.realpath(__file__))
 sys.path[0] = os.path.join(HERE, "owlight")  # only the bootstrap; the rest waits for its environment
 
 import _bootstrap  # noqa: E402

@@ -2,7 +2,7 @@
 import os
 import sys
 
-HERE = os.path.dirname(os.path.abspath(__file__))
+HERE = os.path.dirname(os.path.realpath(__file__))
 # tests/ itself must not be on the path: its folders carry names of standard modules
 sys.path[0] = os.path.join(os.path.dirname(HERE), "src", "owlight")
 

@@ -294,6 +294,17 @@ def test_windows_waits_for_a_child(programs: Programs, monkeypatch: pytest.Monke
         signal.signal(signal.SIGINT, before)
 
 
+@pytest.mark.skipif(os.name == "nt", reason="links need a privilege there")
+@pytest.mark.parametrize("folder", ["src", "tests"])
+def test_link_to_checkout_is_the_checkout(tmp_path: Path, folder: str) -> None:
+    (tmp_path / "link").symlink_to(CHECKOUT)
+    show = "import runpy, sys; print(runpy.run_path(sys.argv[1])['HERE'])"
+    surroundings = {**os.environ, "PYTHONPATH": str(Path(_bootstrap.__file__).parent)}
+    command = [sys.executable, "-c", show, str(tmp_path / "link" / folder / "__main__.py")]
+    found = subprocess.run(command, cwd=tmp_path, env=surroundings, capture_output=True, text=True, check=True)
+    assert found.stdout.strip() == str((CHECKOUT / folder).resolve()), "else each name would set everything up again"
+
+
 def test_bare_start_names_the_commands(tmp_path: Path) -> None:
     found = subprocess.run(
         [sys.executable, str(CHECKOUT / "src")], cwd=tmp_path, capture_output=True, text=True, check=True
