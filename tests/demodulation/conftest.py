@@ -4,16 +4,21 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass, replace
+from functools import lru_cache
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 import pytest
 from scipy import fft, interpolate, signal
 
-from owlight.vocabulary.captures import Capture, CaptureId, Lane
+from owlight.demodulation import Chain, LaneBelief, make_chain
+from owlight.vocabulary.captures import Capture, CaptureId, Demodulation, Lane
+from owlight.vocabulary.plan import Signal
 from owlight.vocabulary.values import Stamp
 
-OVERSAMPLING = 8
+OVERSAMPLING = 5
+NAMES = {1: ("I", "Q"), 2: ("XI", "XQ", "YI", "YQ")}
 
 
 @dataclass(frozen=True)
@@ -74,10 +79,8 @@ def transmit(link: Link) -> Sent:
     x = _fields(link, sent, rng)
     lanes, converter = _lanes(link, x, rng)
     snr = 1.0 / (10 ** (-link.snr_db / 10) + converter)
-    names = ("XI", "XQ", "YI", "YQ") if link.polarisations == 2 else ("I", "Q")
-    made = tuple(
-        Lane(name, codes, 1e-3, 0.0, 0.0, str(link.seed) + name) for name, codes in zip(names, lanes, strict=True)
-    )
+    named = zip(NAMES[link.polarisations], lanes, strict=True)
+    made = tuple(Lane(name, codes, 1e-3, 0.0, 0.0, f"{link.seed}{name}") for name, codes in named)
     at = Stamp("2026-01-01T00:00:00Z", 0.0, 0)
     return Sent(Capture(CaptureId(0, 1, 1), at, link.sample_rate_hz, made, link.seed), 10 * np.log10(snr), sent)
 
@@ -148,7 +151,7 @@ def _lanes(
         for lane, wave in enumerate((gain * field.real, (field * np.exp(-1j * error)).imag / gain)):
             delayed = response * np.exp(-2j * np.pi * f * link.skews_s[2 * p + lane])
             filtered = fft.ifft(fft.fft(wave) * delayed).real
-            taken = interpolate.make_interp_spline(np.arange(n), filtered, k=3)(at)
+            taken = interpolate.make_interp_spline(np.arange(n), filtered, k=5)(at)
             if lane == 0:
                 full = 8 * float(np.std(taken))
             codes.append(_digitised(taken / full, link.effective_bits, rng))
@@ -182,16 +185,37 @@ def _converter_share(full: float, link: Link, response, f) -> float:
 @pytest.fixture(scope="session")
 def transmission() -> Callable[[Link], Sent]:
     """Transmissions by link, each made once."""
-    made: dict[Link, Sent] = {}
-
-    def sent(link: Link) -> Sent:
-        if link not in made:
-            made[link] = transmit(link)
-        return made[link]
-
-    return sent
+    return lru_cache(maxsize=16)(transmit)
 
 
 @pytest.fixture(scope="session")
-def ideal_link() -> Link:
+def ideal() -> Link:
     return Link()
+
+
+@pytest.fixture(scope="session")
+def chain_of() -> Callable[..., Chain]:
+    """The chain of somebody who knows everything of a link that a bench file can tell."""
+
+    def made(link: Link, overrides: Any = None, **believed: Any) -> Chain:
+        names = NAMES[link.polarisations]
+        known = replace(link, **believed)
+        kind = {1: "single polarisation", 2: "dual polarisation"}[link.polarisations]
+        sent = Signal(
+            modulation="QPSK",
+            symbol_rate_bd=known.symbol_rate_bd,
+            polarisations=link.polarisations,
+            pulse_shape="root raised cosine",
+            rolloff=known.rolloff,
+            pattern_order=known.order,
+            tributary_offsets=known.offsets[: 2 * link.polarisations],
+        )
+        lanes = tuple(LaneBelief(name, skew_s, False) for name, skew_s in zip(names, known.skews_s, strict=False))
+        return Chain.from_text(make_chain(kind, sent, lanes, overrides).text)
+
+    return made
+
+
+@pytest.fixture(scope="session")
+def figures_of() -> Callable[[Demodulation], dict[str, float]]:
+    return lambda found: {name: value for stage in found.stages for name, value in stage.figures.items()}

@@ -12,8 +12,8 @@ from owlight.demodulation.journal import Journal, NoLockError
 from owlight.demodulation.lane_map import Pairing, alignment_figures, alignment_words, insist, pairings
 from owlight.demodulation.stages import clock as clocks
 from owlight.demodulation.stages.carrier import carrier_phase, decide, frequency_offset
-from owlight.demodulation.stages.equaliser import SINGULAR, blind_taps, equalise, least_squares_taps
-from owlight.demodulation.stages.front import Front, carrier_step_hz, matched_filter
+from owlight.demodulation.stages.equaliser import SINGULAR, blind_taps, equalise, least_squares_taps, likeness
+from owlight.demodulation.stages.front import Front, carrier_turns, matched_filter
 from owlight.demodulation.stages.image import Imbalance, imbalances
 from owlight.demodulation.stages.lanes import block_spectra, orthonormalise
 from owlight.demodulation.stages.synchronisation import Alignment, Reference, synchronise
@@ -26,19 +26,21 @@ _CARRIER_STANDS_OUT = 1.5
 _SIGNIFICANT = 4.0
 """Standard uncertainties beyond which a skew is corrected; closer to zero a correction would only add noise."""
 _HARMLESS_SYMBOLS = 0.01
+_CORRECTIONS = 3
+"""The estimate is of first order: of a skew of a tenth of a symbol a tenth is left for the next."""
 
 
 @dataclass(frozen=True)
 class Acquired:
     """`x` at two samples a symbol; `turn` is the carrier's in radians a symbol; symbols before `trained` taught.
 
-    `moved` is how far the front moved the carrier, in radians a sample of x.
+    `moved`: radians by which the front turned the carrier back, at the first sample of x and a sample.
     """
 
     x: Complex
     taps: Complex
     turn: float
-    moved: float
+    moved: tuple[float, float]
     trained: int
     alignment: Alignment
     words: str
@@ -51,15 +53,18 @@ def acquire(z: Complex, sample_rate_hz: float, chain: Chain, reference: Referenc
     first: tuple[Journal, NoLockError] | None = None
     for pairing in tried:
         attempt = Journal()
-        believed = tuple(chain.lanes[lane].skew_s * chain.stages.deskew.believed for lane in pairing.order)
+        skews_s = tuple(chain.lanes[lane].skew_s * chain.stages.deskew.believed for lane in pairing.order)
         try:
-            found = _train(pairing, z, (sample_rate_hz, believed), chain, reference, attempt)
+            found = _train(pairing, z, (sample_rate_hz, skews_s), chain, reference, attempt)
         except NoLockError as trouble:
             first = first or (attempt, trouble)
             continue
-        corrected = _corrected(believed, found.imbalances, chain)
-        if corrected != believed:
-            found = _train(pairing, z, (sample_rate_hz, corrected), chain, reference, attempt)
+        for _ in range(_CORRECTIONS):
+            corrected = _corrected(skews_s, found.imbalances, chain)
+            if corrected == skews_s:
+                break
+            skews_s = corrected
+            found = _train(pairing, z, (sample_rate_hz, skews_s), chain, reference, attempt)
         journal.take_over(attempt)
         return found
     assert first is not None
@@ -89,14 +94,15 @@ def _train(
     with journal.stage("deskew") as figures:
         for lane, skew_s in zip(pairing.order, rate_and_skews[1], strict=True):
             figures[f"skew_{names[lane].lower()}_ps"] = 1e12 * skew_s
-    x, step_hz = _front(pairing.apply(z), *rate_and_skews, chain, journal)
+    x, moved = _front(pairing.apply(z), *rate_and_skews, chain, journal)
     trained = _training_symbols(x.shape[1] // 2, chain)
-    taps, turn = _blind(x, trained, step_hz, chain, journal)
+    taps, turn = _blind(x, trained, 2 * moved[1], chain, journal)
     settings, window = chain.stages.equaliser, chain.stages.carrier_phase.window_symbols
     with journal.stage("equaliser") as figures:
         for _ in range(2):
             taps, found = least_squares_taps(x, taps, (0, trained), turn, window, settings.ridge)
         y = steady(equalise(x, taps, 0, trained), 0, turn)
+        _insist_on_two(likeness(y) if len(y) == 2 else 0.0)
         coefficients = taps.shape[1] * taps.shape[2]
         figures |= {**found, "trained_symbols": float(trained), "trained_symbols_a_coefficient": trained / coefficients}
     with journal.stage("carrier phase"):
@@ -107,7 +113,6 @@ def _train(
         figures |= alignment_figures(alignment, chain, reference)
         insist(alignment, chain)
     told = (pairing.words(names, all(alignment.conjugated)), alignment_words(alignment, chain))
-    moved = np.pi * step_hz / chain.signal.symbol_rate_bd
     acquired = Acquired(x, taps, turn, moved, trained, alignment, "; ".join(w for w in told if w), [])
     return replace(acquired, imbalances=seen_imbalances(acquired, y, phase, chain, journal))
 
@@ -119,7 +124,8 @@ def seen_imbalances(
     with journal.stage("deskew") as figures:
         turning = np.exp(1j * (phase + acquired.turn * np.arange(y.shape[1]))).astype(np.complex64)
         middle = acquired.taps.shape[2] // 2
-        seen = imbalances(acquired.x[:, middle:], decide(y) * turning, acquired.moved, chain.signal.symbol_rate_bd)
+        moved = (acquired.moved[0] + middle * acquired.moved[1], acquired.moved[1])
+        seen = imbalances(acquired.x[:, middle:], decide(y) * turning, moved, chain.signal.symbol_rate_bd)
         for key, one in zip("xy", seen, strict=False):
             figures[f"residual_skew_{key}_ps"] = 1e12 * one.skew_s
             figures[f"residual_skew_{key}_u_ps"] = 1e12 * one.skew_u_s
@@ -139,22 +145,26 @@ def _training_symbols(symbols: int, chain: Chain) -> int:
     return min(chain.stages.equaliser.training_symbols, max(symbols // 3, min(symbols // 2, 8192)))
 
 
-def _blind(x: Complex, trained: int, step_hz: float, chain: Chain, journal: Journal) -> tuple[Complex, float]:
-    """Taps that know no pattern yet, and the carrier's turn a symbol."""
+def _blind(x: Complex, trained: int, moved: float, chain: Chain, journal: Journal) -> tuple[Complex, float]:
+    """Taps that know no pattern yet, and the carrier's turn a symbol; `moved` of it were taken out before."""
     settings = chain.stages.equaliser
     with journal.stage("equaliser") as figures:
         blind = min(settings.blind_symbols, trained)
         taps, found = blind_taps(x, chain.signal.polarisations, settings.taps, blind, settings.step)
         figures |= found
-        if found["output_likeness"] > SINGULAR:
-            raise NoLockError("both outputs of the equaliser carry the same polarisation")
+        _insist_on_two(found["output_likeness"])
     with journal.stage("frequency offset") as figures:
         turn, line_db = 0.0, 0.0
         if chain.stages.frequency_offset.on:
             turn, line_db = frequency_offset(equalise(x, taps, 0, trained))
-        offset_hz = step_hz + turn / (2 * np.pi) * chain.signal.symbol_rate_bd
+        offset_hz = (moved + turn) / (2 * np.pi) * chain.signal.symbol_rate_bd
         figures |= {"frequency_offset_hz": offset_hz, "line_db": line_db}
     return taps, turn
+
+
+def _insist_on_two(alike: float) -> None:
+    if alike > SINGULAR:
+        raise NoLockError("both outputs of the equaliser carry the same polarisation")
 
 
 def steady(y: Complex, begin: int, turn: float) -> Complex:
@@ -164,8 +174,8 @@ def steady(y: Complex, begin: int, turn: float) -> Complex:
 
 def _front(
     z: Complex, sample_rate_hz: float, skews_s: tuple[float, ...], chain: Chain, journal: Journal
-) -> tuple[Complex, float]:
-    """The signal at two samples a symbol, and by how much its carrier was moved."""
+) -> tuple[Complex, tuple[float, float]]:
+    """The signal at two samples a symbol, and how far its carrier was turned back at the first sample and a sample."""
     signal, stages = chain.signal, chain.stages
     nominal = sample_rate_hz / signal.symbol_rate_bd
     if nominal < 1.0 + signal.rolloff:
@@ -200,7 +210,7 @@ def _front(
         front = Front(sample_rate_hz, signal.symbol_rate_bd, signal.rolloff, skews_s, matrices, centre_hz, found)
         block, overlap = stages.matched_filter.block_samples, stages.matched_filter.overlap_samples
         x = matched_filter(z, front, block, overlap)
-    return x, carrier_step_hz(front, block)
+    return x, carrier_turns(front, block, overlap)
 
 
 def _centre(spectra: Complex, apart: int, half_width: int, samples_a_symbol: float, wanted: bool) -> int:

@@ -90,12 +90,6 @@ def insist(alignment: Alignment, chain: Chain) -> None:
             needed = max(limits.least_peak, limits.least_margin * match.second)
             best = f"best correlation {match.peak:.3f} (needed {needed:.3f}), next best {match.second:.3f}"
             raise NoLockError(f"the pattern was not found in {lost}: {best}")
-    starts = [[match.start for match in alignment.matches[n : n + 2]] for n in range(0, len(alignment.matches), 2)]
-    near = limits.lag_tolerance_symbols
-    if len(starts) == 2 and all(min(abs(a - b) for b in starts[1]) <= near for a in starts[0]):
-        raise NoLockError(
-            "both outputs of the equaliser carry the same pattern at the same delay: one polarisation twice"
-        )
 
 
 def alignment_words(alignment: Alignment, chain: Chain) -> str:

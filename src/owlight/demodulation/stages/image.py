@@ -31,11 +31,11 @@ class Imbalance:
     gain_u_db: float
 
 
-def imbalances(x: Complex, symbols: Complex, turn_a_sample: float, symbol_rate_bd: float) -> list[Imbalance]:
+def imbalances(x: Complex, symbols: Complex, moved: tuple[float, float], symbol_rate_bd: float) -> list[Imbalance]:
     """One a received polarisation: x (polarisations, samples) at two samples a symbol, symbol k at sample 2 k.
 
     `symbols` (outputs, n) are turned as the carrier turns them in x. The image lies mirrored about the frequency that
-    was zero in the lanes: x was moved from there by `turn_a_sample` radians a sample.
+    was zero in the lanes: x was turned back from there, by `moved` radians at its first sample and a sample.
 
     >>> rng = np.random.default_rng(1)
     >>> sent = (rng.choice([-1, 1], 65536) + 1j * rng.choice([-1, 1], 65536)) / np.sqrt(2)
@@ -43,12 +43,12 @@ def imbalances(x: Complex, symbols: Complex, turn_a_sample: float, symbol_rate_b
     >>> wave = np.repeat(turned, 2)
     >>> q = np.cos(np.radians(93)) * wave.real + np.sin(np.radians(93)) * wave.imag
     >>> x = (wave.real + 1j * q).astype(np.complex64)[None, :]
-    >>> found = imbalances(x, turned.astype(np.complex64)[None, :], 0.0, 1.0)
+    >>> found = imbalances(x, turned.astype(np.complex64)[None, :], (0.0, 0.0), 1.0)
     >>> round(found[0].quadrature_error_deg, 1)
     3.0
     """
     count = min(symbols.shape[1], x.shape[1] // 2) // (_SEGMENT // 2) * (_SEGMENT // 2)
-    back = np.exp(1j * turn_a_sample * np.arange(2 * count)).astype(np.complex64)
+    back = np.exp(1j * (moved[0] + moved[1] * np.arange(2 * count))).astype(np.complex64)
     spread = np.zeros((len(symbols), 2 * count), dtype=np.complex64)
     spread[:, ::2] = symbols[:, :count]
     taken, sent = (_segments(part * back) for part in (x[:, : 2 * count], spread))
@@ -63,7 +63,8 @@ def imbalances(x: Complex, symbols: Complex, turn_a_sample: float, symbol_rate_b
     mirror = straight[minus].conj()
     ratio = ((image * mirror.conj()).sum(axis=1) / np.maximum((np.abs(mirror) ** 2).sum(axis=1), 1e-30)).T
     f = scipy.fft.fftfreq(_SEGMENT, 0.5 / symbol_rate_bd)
-    inside = np.abs(f) < _INSIDE * symbol_rate_bd
+    # where the band and its mirror image overlap, whatever the carrier's offset
+    inside = np.abs(f) < max(_INSIDE - abs(moved[1]) / np.pi, 0.05) * symbol_rate_bd
     return [_fitted(f[inside], r[inside].astype(np.complex128)) for r in ratio]
 
 
