@@ -30,6 +30,8 @@ def _status() -> int:
 
         app(standalone_mode=True)
     except SystemExit as end:
+        if type(sys.stdout).__name__ == "PacifyFlushWrapper":  # how typer marks that the reader of our output left
+            return 0
         return end.code if isinstance(end.code, int) else int(end.code is not None)
     except OwlightError as trouble:
         print(f"owlight: {trouble}", file=sys.stderr)

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import os
+import shutil
+import textwrap
 from pathlib import Path
 from typing import Any
 
@@ -113,6 +115,10 @@ def _quoted(path: Path) -> str:
     return f'"{text}"' if " " in text else text
 
 
+def _columns() -> int:
+    return max(60, min(shutil.get_terminal_size().columns, 120))
+
+
 def print_runs(found: list[Json], folder: Path) -> None:
     if not found:
         print(f"The logbook in {folder} holds no run.")
@@ -145,7 +151,11 @@ def print_demodulation(found: Json) -> None:
     """One capture's journey, a row a stage, then what was counted."""
     for stage in found["stages"]:
         figures = ", ".join(f"{name} {value:.4g}" for name, value in stage["figures"].items())
-        print(f"{stage['stage']:20} {figures}")
+        print(
+            textwrap.fill(
+                figures or "-", _columns(), initial_indent=f"{stage['stage']:20} ", subsequent_indent=" " * 21
+            )
+        )
     print(f"\n{found['status']}" + (f": {found['reason']}" if found["reason"] else ""))
     if found["status"] != "locked":
         return

@@ -61,9 +61,9 @@ def _request(plan: Plan, bench: Bench, stays: tuple[Stay, ...]) -> SensitivityRe
 
 
 def _record_checks(finished: History) -> tuple[Check, ...]:
-    """Whether the records were plausible: asked of each capture, answered once for the run."""
+    """Whether records and lanes are as believed: asked of each capture, answered once for the run."""
     every = [check for stay in finished for check in stay.checks]
-    names = ("clipping", "dead lane", "duplicate capture", "record length")
+    names = ("clipping", "dead lane", "duplicate capture", "record length", "lanes")
     return tuple(summed_up(name, [c for c in every if c.name == name], "captures") for name in names)
 
 

@@ -55,9 +55,12 @@ def demodulate_file(file: Path, asked: FileSignal) -> dict[str, Any]:
 
 def _quantity(option: str, text: str, unit: str) -> float:
     try:
-        return parse(text, unit)
+        value = parse(text, unit)
     except ValueError as trouble:
         raise InputError(f"{option}: {trouble}.") from None
+    if not value > 0:
+        raise InputError(f"{option}: {text!r} is not possible. Give a rate above zero.")
+    return value
 
 
 def _reference(text: str) -> tuple[Any, int]:

@@ -72,6 +72,7 @@ def _find(night: Night, request: CaptureRequest, strongest: Point) -> tuple[floa
         seed = seed_for(night.plan.seed, "vertical", strongest.index, trial)
         night.announce(seed, 0.0)
         capture = night.bench.capture(CaptureId(strongest.index, 0, trial), seed, 0.0, request)
+        _insist_on_new(night, capture)
         wanted_v = _wanted(capture, ranges_v)
         if wanted_v == ranges_v:
             words = ", ".join(
@@ -85,6 +86,18 @@ def _find(night: Night, request: CaptureRequest, strongest: Point) -> tuple[floa
         "Look at the receiver's gain and at the lanes with a capture by hand.",
         "oscilloscope",
     )
+
+
+def _insist_on_new(night: Night, capture: Capture) -> None:
+    """A range judged from a record that was delivered before would be wrong for the whole curve."""
+    hashes = {lane.sha256 for lane in capture.lanes}
+    if hashes <= night.seen_sha256:
+        raise InstrumentError(
+            "The oscilloscope delivered an old record again, so no vertical range can be found; the bench is made "
+            "safe. Look at its trigger and at how its driver arms it.",
+            "oscilloscope",
+        )
+    night.seen_sha256 |= hashes
 
 
 def _wanted(capture: Capture, ranges_v: tuple[float, ...]) -> tuple[float, ...]:
