@@ -42,15 +42,16 @@ def read_npz(file: Path, lanes: tuple[str, ...], sample_rate_hz: float) -> Captu
 
 def _arrays(file: Path) -> tuple[npt.NDArray[Any], npt.NDArray[Any]]:
     try:
-        with np.load(file, allow_pickle=False) as archive:
-            if not hasattr(archive, "files"):
-                raise ValueError("it is a single array, not an archive")
+        archive = np.load(file, allow_pickle=False)
+        if isinstance(archive, np.ndarray):
+            raise ValueError("it is a single array")
+        with archive:
             if "codes" not in archive.files:
                 held = ", ".join(archive.files) or "nothing"
                 raise InputError(f"{file} has no array `codes`, but {held}. Save it with numpy.savez(file, codes=...).")
             scale = archive["volts_per_code"] if "volts_per_code" in archive.files else np.ones(1)
             return archive["codes"], np.asarray(scale)
-    except (OSError, ValueError, EOFError, zipfile.BadZipFile, AttributeError, TypeError) as trouble:
+    except (OSError, ValueError, EOFError, zipfile.BadZipFile) as trouble:
         words = f"{file} cannot be read as a NumPy archive ({trouble})"
         raise InputError(f"{words}. Give a .npz file saved with numpy.savez(file, codes=...).") from trouble
 

@@ -89,7 +89,7 @@ def matched_filter(z: Complex, front: Front, block: int = 4096, overlap: int = 2
     total = int((z.shape[1] - margin * step - first) / step) & ~1
     shift = round(front.centre_hz / front.sample_rate_hz * length)
     straight, mirrored, kept = _responses(front, length, out, shift)
-    drift = (step * out / length - 1.0) * (np.arange(out) - margin - hop / 2)
+    drift = np.asarray((step * out / length - 1.0) * (np.arange(out) - margin - hop / 2), dtype=np.float64)
     found = np.empty((len(z), max(total, 0)), dtype=np.complex64)
     padded = np.pad(z, ((0, 0), (length, 2 * length)))
     starts = np.arange(0, max(total, 0), hop)
