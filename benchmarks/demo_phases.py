@@ -1,10 +1,10 @@
 """Where the time of one demo goes, and how far each part is from what it cannot do without.
 
 python benchmarks/demo_phases.py. One demo runs as a user would run it; the runner's calls are timed, each moment
-counted once, for the innermost call. A simulated record is computed when the stepped time comes to it. Demodulation runs beside the measurement in a process of its own: only
-what the runner waited for it counts here. Bounds are measured after the demo, in the same process:
-the bare Fourier transforms of one simulated record and of one demodulation, of the same sizes and kinds; the same
-bytes through a bare socket; the same bytes appended to a plain file, made durable once a stay.
+counted once, for the innermost call. A simulated record is computed when the stepped time comes to it. Demodulation
+runs beside the measurement in a process of its own: only what the runner waited for it counts. Bounds are measured
+after the demo, in the same process: the bare Fourier transforms of one simulated record and of one demodulation, of
+the same sizes and kinds; the same bytes through a bare socket; the same bytes in a plain file, durable once a stay.
 """
 
 from __future__ import annotations
