@@ -25,6 +25,8 @@ def verdict(root: Path) -> tuple[int, str]:
 def copy(tmp_path_factory: pytest.TempPathFactory) -> Path:
     root = tmp_path_factory.mktemp("copy")
     shutil.copytree(ROOT / "src", root / "src", ignore=shutil.ignore_patterns("__pycache__", ".*"))
+    for folder in (root / "src").glob("**/"):
+        folder.chmod(0o755)  # the checkout may be one that cannot be written
     shutil.copy(ROOT / "pyproject.toml", root)
     return root
 
