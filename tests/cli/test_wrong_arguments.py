@@ -1,0 +1,193 @@
+"""Every mistake gets its words and its exit status; nothing is opened, nothing is written, nobody sees a traceback."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pytest
+
+from owlight import shipped, simulation
+from owlight.cli.measure import exit_status
+
+RATES = ("--symbol-rate", "32 GBd", "--sample-rate", "80 GS/s")
+INPUT, SAFETY, STORAGE = 2, 4, 5
+
+
+@pytest.fixture
+def unopened(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Nothing may be started, so nothing can be opened."""
+
+    def started(*arguments: object, **more: object) -> None:
+        pytest.fail("a bench was started")
+
+    monkeypatch.setattr(simulation, "start", started)
+
+
+def test_two_typos_are_told_at_once(owlight: Any, tmp_path: Path, unopened: None) -> None:
+    text = shipped.find("sequences", "power_log").read_text("utf-8")
+    text = text.replace('"power_meter.averaging_time"', '"power_metre.averaging_time"')
+    text = text.replace('"signal_laser.power" = "10 dBm"', '"signal_laser.power" = "10 dB"')
+    path = tmp_path / "typos.toml"
+    path.write_text(text, "utf-8")
+    lines = {word: 1 + text[: text.index(word)].count("\n") for word in ("power_metre", '"10 dB"')}
+    answer = owlight("run", path, "--bench", "bench", "--logbook", tmp_path / "log")
+    assert answer.status == INPUT and answer.out == ""
+    assert f"typos.toml:{lines['power_metre']}" in answer.err and 'did you mean "power_meter"' in answer.err
+    assert f"typos.toml:{lines[chr(34) + '10 dB' + chr(34)]}" in answer.err and "dBm" in answer.err
+    assert "Nothing was opened" in answer.err and not (tmp_path / "log").exists()
+
+
+@pytest.mark.parametrize("command", ["run", "forecast"])
+def test_too_much_power_is_refused(owlight: Any, tmp_path: Path, unopened: None, command: str) -> None:
+    """Plane, limit, what was computed and the point are named before anything is opened."""
+    text = shipped.find("sequences", "qpsk_sensitivity").read_text("utf-8")
+    text = text.replace('from = "-40 dBm"\nto = "-36 dBm"\nstep = "0.5 dB"', 'values = ["-36 dBm", "6 dBm"]')
+    path = tmp_path / "bright.toml"
+    path.write_text(text, "utf-8")
+    folder = ("--logbook", tmp_path / "log") if command == "run" else ()
+    answer = owlight(command, path, "--bench", "bench", *folder)
+    assert answer.status == SAFETY and answer.out == ""
+    # 6 dBm is asked for, and the bench file gives the attenuator 0.3 dB of accuracy and the laser 0.5 dB of tolerance
+    for words in ("Point 1", "receiver signal input", "limit of 3.00 dBm", "Nothing was set"):
+        assert words in answer.err, words
+    assert not (tmp_path / "log").exists()
+
+
+@pytest.mark.parametrize("option", ["--force", "--yes", "--no-limits", "--ignore-limits"])
+def test_no_option_lifts_a_limit(owlight: Any, unopened: None, option: str) -> None:
+    answer = owlight("run", "qpsk_sensitivity", "--bench", "bench", option)
+    assert answer.status == INPUT and "No such option" in answer.err
+
+
+@pytest.mark.parametrize(
+    ("arguments", "words"),
+    [
+        (("forecast", "nosuch", "--bench", "bench"), "nosuch"),
+        (("forecast", "qpsk_sensitivity", "--bench", "nosuch"), "nosuch"),
+        (("run", "qpsk_sensitivity"), "--bench"),
+        (("safe", "--bench", "nosuch"), "nosuch"),
+        (("identify", "--bench", "nosuch", "--json"), "nosuch"),
+        (("simulate", "nosuch"), "nosuch"),
+        (("show", "last", "--logbook", "nowhere"), "no logbook in nowhere"),
+        (("logbook", "--logbook", "nowhere"), "no logbook in nowhere"),
+        (("report", "last", "--logbook", "nowhere"), "no logbook in nowhere"),
+        (("reproduce", "last", "--logbook", "nowhere"), "no logbook in nowhere"),
+        (("demodulate", "nowhere.npz", *RATES), "nowhere.npz"),
+        (("sow",), "sow"),
+    ],
+    ids=lambda value: " ".join(value) if isinstance(value, tuple) else "",
+)
+def test_missing_things_are_named(
+    owlight: Any,
+    unopened: None,
+    monkeypatch: pytest.MonkeyPatch,
+    tmp_path: Path,
+    arguments: tuple[str, ...],
+    words: str,
+) -> None:
+    monkeypatch.chdir(tmp_path)
+    answer = owlight(*arguments)
+    assert answer.status == INPUT and answer.out == "" and words in answer.err
+    assert list(tmp_path.iterdir()) == []
+
+
+def test_folder_that_is_a_file_is_storage(owlight: Any, tmp_path: Path) -> None:
+    (tmp_path / "file").write_text("")
+    answer = owlight("run", "power_log", "--bench", "bench", "--logbook", tmp_path / "file")
+    assert answer.status == STORAGE and "nothing was started" in answer.err
+
+
+def test_damaged_logbook_is_storage(owlight: Any, tmp_path: Path) -> None:
+    (tmp_path / "logbook.db").write_bytes(b"this is no data base" * 100)
+    answer = owlight("show", "last", "--logbook", tmp_path)
+    assert answer.status == STORAGE and "Copy the file" in answer.err
+
+
+CODES = np.random.default_rng(1).integers(-90, 90, (4, 4000)).astype(np.int8)
+
+
+@pytest.mark.parametrize(
+    ("arrays", "words"),
+    [
+        ({"codes": CODES * np.nan}, "not integers"),
+        ({"other": CODES}, "no array `codes`, but other"),
+        ({"codes": CODES.T}, "Transpose it"),
+        ({"codes": CODES[:3]}, "3 x 4000"),
+        ({"codes": CODES[:, :0]}, "no sample"),
+        ({"codes": CODES * np.array([[1], [0], [1], [1]], np.int8)}, "dead or stuck"),
+        ({"codes": CODES, "volts_per_code": np.array(np.inf)}, "volts_per_code"),
+    ],
+    ids=lambda value: value if isinstance(value, str) else "",
+)
+def test_unusable_records_are_told(owlight: Any, tmp_path: Path, arrays: dict[str, Any], words: str) -> None:
+    np.savez(tmp_path / "record.npz", **arrays)
+    answer = owlight("demodulate", tmp_path / "record.npz", *RATES, "--json")
+    assert answer.status == INPUT and answer.out == "" and words in answer.err
+
+
+@pytest.mark.parametrize(
+    ("option", "value", "words"),
+    [
+        ("--symbol-rate", "32 GHz", "a symbol rate (Bd) is needed"),
+        ("--symbol-rate", "32", "--symbol-rate"),
+        ("--symbol-rate", "0 GBd", "above zero"),
+        ("--symbol-rate", "-32 GBd", "above zero"),
+        ("--sample-rate", "80 GBd", "--sample-rate"),
+        ("--sample-rate", "nan S/s", "--sample-rate"),
+        ("--reference", "16", "order 16"),
+        ("--reference", "nowhere.npy", "nowhere.npy"),
+        ("--modulation", "QPSQ", "QPSQ"),
+        ("--polarisations", "3", "--polarisations"),
+        ("--rolloff", "2", "--rolloff"),
+    ],
+)
+def test_unusable_arguments_are_told(owlight: Any, tmp_path: Path, option: str, value: str, words: str) -> None:
+    np.savez(tmp_path / "record.npz", codes=CODES)
+    answer = owlight("demodulate", tmp_path / "record.npz", *RATES, option, value)
+    assert answer.status == INPUT and answer.out == "" and words in answer.err
+
+
+def test_truncated_archive_is_told(owlight: Any, tmp_path: Path) -> None:
+    path = tmp_path / "record.npz"
+    np.savez(path, codes=CODES)
+    path.write_bytes(path.read_bytes()[:5000])
+    answer = owlight("demodulate", path, *RATES)
+    assert answer.status == INPUT and "cannot be read as a NumPy archive" in answer.err
+
+
+def test_unforeseen_faults_are_two_sentences(owlight: Any, monkeypatch: pytest.MonkeyPatch, tmp_path: Path) -> None:
+    def fails(*arguments: object) -> None:
+        raise ZeroDivisionError("division by zero")
+
+    monkeypatch.setattr("owlight.jobs.listing.listing", fails)
+    monkeypatch.setattr(shipped, "user_cache", lambda: tmp_path / "cache")
+    answer = owlight("logbook")
+    assert answer.status == 3 and answer.out == "" and len(answer.err.splitlines()) == 2
+    assert "ZeroDivisionError" in answer.err and "Traceback" not in answer.err
+    assert "in fails" in (tmp_path / "cache" / "last_fault.txt").read_text("utf-8")
+
+
+def test_interrupted_command_has_its_status(owlight: Any, monkeypatch: pytest.MonkeyPatch) -> None:
+    def interrupted(*arguments: object) -> None:
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr("owlight.jobs.listing.listing", interrupted)
+    assert owlight("logbook").status == 130
+
+
+@pytest.mark.parametrize(
+    ("found", "status"),
+    [
+        ({"state": "finished", "findings": [], "missing": []}, 0),
+        ({"state": "finished", "findings": [{"finding": "doubtful"}], "missing": []}, 0),
+        ({"state": "finished", "findings": [{"finding": "ok"}, {"finding": "bad"}], "missing": []}, 1),
+        ({"state": "finished", "findings": [], "missing": [3]}, 1),
+        ({"state": "gave up", "findings": [], "missing": [3]}, 3),
+        ({"state": "broken off", "findings": [], "missing": []}, 3),
+        ({"state": "called off", "findings": [{"finding": "bad"}], "missing": [3]}, 130),
+    ],
+)
+def test_status_follows_the_outcome(found: dict[str, object], status: int) -> None:
+    assert exit_status(found) == status
