@@ -108,6 +108,14 @@ def test_reference_may_be_labels(transmission, chain_of, link, counted):
     assert found.tributaries == counted.tributaries
 
 
+def test_labels_may_hold_a_pattern_several_times(transmission, chain_of, ideal):
+    link = replace(ideal, symbols=16_000, seed=23, snr_db=8.0, order=11, offsets=(0, 300, 900, 1500))
+    sent = transmission(link)
+    labels = 2 * (sent.sent.real > 0) + (sent.sent.imag > 0)  # nearly eight times over
+    by_order = demodulate(sent.capture, chain_of(link))
+    assert demodulate(sent.capture, chain_of(link), labels).tributaries == by_order.tributaries
+
+
 def test_repeated_short_labels_count_alike(transmission, chain_of, ideal):
     link = replace(ideal, symbols=16_000, seed=23, snr_db=8.0, order=11, offsets=(0, 300, 900, 1500))
     sent = transmission(link)

@@ -90,7 +90,7 @@ def test_blind_outputs_never_share_a_polarisation():
 def test_slips_are_found_and_left_in():
     rng = np.random.default_rng(4)
     signs = rng.choice([-1, 1], (2, 8192)).astype(np.int8)
-    reference = Reference(signs, (0, 1), (0, 0), True)
+    reference = Reference(signs, (0, 1), (0, 0), True, 8192)
     pair = (Match(0, 0, 1, 1.0, 0.0, 0), Match(1, 0, 1, 1.0, 0.0, 0))
     y = (signs[0] + 1j * signs[1]).astype(np.complex64)
     y[3072:6144] *= 1j

@@ -13,7 +13,7 @@ from owlight.demodulation.chain import Chain
 from owlight.demodulation.journal import Journal, NoLockError
 from owlight.demodulation.lane_map import TRIBUTARIES
 from owlight.demodulation.stages.carrier import carrier_phase, linewidth
-from owlight.demodulation.stages.counting import Counts, count, evm_percent
+from owlight.demodulation.stages.counting import Counts, count, evm_percent, unrepeated
 from owlight.demodulation.stages.equaliser import equalise, least_squares_taps
 from owlight.demodulation.stages.lanes import scale
 from owlight.demodulation.stages.synchronisation import Reference, reference_of_labels, reference_of_order
@@ -121,7 +121,8 @@ def _tally(
 ) -> tuple[tuple[Tributary, ...], float, float]:
     """Counts by tributary in their own order; means over the polarisations of noise (as SNR) and of information."""
     with journal.stage("counting") as figures:
-        matches, block = acquired.alignment.matches, chain.stages.counting.slip_block_symbols
+        matches = unrepeated(y[:, at], acquired.alignment.matches, reference, at)
+        block = chain.stages.counting.slip_block_symbols
         counts = [count(y[q, at], matches[2 * q : 2 * q + 2], reference, at, block) for q in range(len(y))]
         names = TRIBUTARIES[chain.signal.polarisations]
         found = {

@@ -57,7 +57,7 @@ def pairings(lanes: int, permute: bool) -> tuple[Pairing, ...]:
 def alignment_figures(alignment: Alignment, chain: Chain, reference: Reference) -> dict[str, float]:
     """Peaks, delays and the plan; the probability that any of the delays searched in pure noise gives such a peak."""
     names = TRIBUTARIES[chain.signal.polarisations]
-    hypotheses = len(alignment.matches) ** 2 * reference.patterns.shape[1]
+    hypotheses = len(alignment.matches) ** 2 * reference.repeats_after
     noise_peak = math.sqrt(2.0 / alignment.symbols) * _inverse_tail(1e-9 / hypotheses)
     figures = {
         "sync_peak": alignment.least_peak,

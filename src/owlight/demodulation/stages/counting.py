@@ -6,7 +6,7 @@ Everything is held against the pattern that was sent (data-aided), on symbols th
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import numpy.typing as npt
@@ -40,7 +40,7 @@ def expected_signs(match: Match, reference: Reference, at: npt.NDArray[np.intp])
 def count(y: Complex, pair: Sequence[Match], reference: Reference, at: npt.NDArray[np.intp], block: int) -> Counts:
     """Count one output, y (symbols,) at indices `at`. The headline count leaves slips in; blocks of `block` find them.
 
-    >>> reference = Reference(np.array([[1, -1, -1], [1, 1, -1]], np.int8), (0, 1), (0, 0), True)
+    >>> reference = Reference(np.array([[1, -1, -1], [1, 1, -1]], np.int8), (0, 1), (0, 0), True, 3)
     >>> pair = (Match(0, 0, 1, 1.0, 0.0, 0), Match(1, 0, 1, 1.0, 0.0, 0))
     >>> y = np.array([1 + 1j, -1 + 1j, 1 - 1j] * 4, np.complex64)       # the third symbol's I is wrong, four times
     >>> found = count(y, pair, reference, np.arange(12), 1024)
@@ -71,6 +71,28 @@ def _slips(y: Complex, i: Signs, q: Signs, wrong: npt.NDArray[np.int32], block: 
         slips += best != turn
         turn, left = best, left + counts[best]
     return slips, left
+
+
+def unrepeated(
+    y: Complex, matches: tuple[Match, ...], reference: Reference, at: npt.NDArray[np.intp]
+) -> tuple[Match, ...]:
+    """Which of the repetitions in the labels was sent first: delays known modulo the repetition, of the whole labels.
+
+    It matters only where the labels end and begin anew, so the one with the fewest errors over all is taken; with so
+    few to choose from and so many symbols, noise cannot look like one.
+    """
+    length = reference.patterns.shape[1]
+    rows = np.stack([y.real, y.imag], axis=1).reshape(len(matches), -1) < 0
+
+    def moved(by: int) -> tuple[Match, ...]:
+        return tuple(replace(match, start=(match.start + by) % length) for match in matches)
+
+    def errors(by: int) -> int:
+        expected = [expected_signs(match, reference, at) < 0 for match in moved(by)]
+        return sum(int(np.count_nonzero(row != one)) for row, one in zip(rows, expected, strict=True))
+
+    steps = range(0, length, reference.repeats_after)
+    return matches if len(steps) == 1 else moved(min(steps, key=errors))
 
 
 def signal_to_noise(y: Complex, sent: Complex) -> float:

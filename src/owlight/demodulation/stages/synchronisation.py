@@ -17,19 +17,22 @@ from owlight.modulation import bits_of_labels, pattern
 
 Complex = npt.NDArray[np.complex64]
 Signs = npt.NDArray[np.int8]
+_CHANCE = 64
 
 
 @dataclass(frozen=True)
 class Reference:
     """What each tributary sends, -1 and 1: tributary t sends patterns[source[t]] from `offsets[t]` on, repeated.
 
-    Without a plan (`planned` false) offsets are unknown and any delays will do.
+    Without a plan (`planned` false) offsets are unknown and any delays will do. `repeats_after`: labels may hold a
+    shorter pattern several times over; delays are then found modulo its length.
     """
 
     patterns: Signs
     source: tuple[int, ...]
     offsets: tuple[int, ...]
     planned: bool
+    repeats_after: int
 
 
 @dataclass(frozen=True)
@@ -68,7 +71,7 @@ def reference_of_order(order: int, tributaries: int, offsets: tuple[int, ...]) -
     """
     signs = (2 * pattern(order).astype(np.int8) - 1)[None, :]
     known = offsets[:tributaries] if offsets else (0,) * tributaries
-    return Reference(signs, (0,) * tributaries, tuple(known), bool(offsets))
+    return Reference(signs, (0,) * tributaries, tuple(known), bool(offsets), signs.shape[1])
 
 
 def reference_of_labels(labels: npt.NDArray[np.integer]) -> Reference:
@@ -81,7 +84,23 @@ def reference_of_labels(labels: npt.NDArray[np.integer]) -> Reference:
         raise ValueError(f"QPSK labels are polarisations x pattern length of 0 to 3; these are {labels.shape}")
     bits = bits_of_labels(labels, 2).astype(np.int8)
     signs = np.ascontiguousarray((2 * bits - 1).transpose(0, 2, 1).reshape(-1, labels.shape[1]))
-    return Reference(signs, tuple(range(len(signs))), (0,) * len(signs), True)
+    return Reference(signs, tuple(range(len(signs))), (0,) * len(signs), True, _repeats_after(signs))
+
+
+def _repeats_after(signs: Signs) -> int:
+    """The least distance at which the patterns are their own continuation, all of them; their length if there is none.
+
+    >>> _repeats_after(np.tile(np.where(pattern(7) > 0, 1, -1).astype(np.int8), 3)[None, :300])
+    127
+    """
+    length = signs.shape[1]
+    padded = scipy.fft.next_fast_len(2 * length, real=True)
+    spectra = scipy.fft.rfft(signs.astype(np.float64), padded, axis=1)
+    agreement = scipy.fft.irfft((np.abs(spectra) ** 2).sum(axis=0), padded)[:length]
+    whole = len(signs) * (length - np.arange(length)) - 0.5
+    # a few symbols at the end are alike by chance
+    found = 1 + np.flatnonzero(agreement[1 : max(1, length - _CHANCE)] > whole[1 : max(1, length - _CHANCE)])
+    return int(found[0]) if len(found) else length
 
 
 def synchronise(y: Complex, reference: Reference, tolerance_symbols: int) -> Alignment:
@@ -98,8 +117,8 @@ def synchronise(y: Complex, reference: Reference, tolerance_symbols: int) -> Ali
     ([(1, 140, -1), (0, 40, 1)], (False,))
     """
     received = np.ascontiguousarray(np.stack([y.real, y.imag], axis=1).reshape(2 * len(y), -1), dtype=np.float32)
-    period = reference.patterns.shape[1]
-    peaks = [[_peak(row, one) for one in reference.patterns] for row in received]
+    period = reference.repeats_after
+    peaks = [[_peak(row, one[:period]) for one in reference.patterns] for row in received]
     count = len(received)
     best: tuple[tuple[int, float], tuple[Match, ...], int] | None = None
     for order in itertools.permutations(range(count)):
