@@ -51,11 +51,11 @@ def test_test_lock_holds_the_run_lock() -> None:
 
 @pytest.mark.parametrize("kind", LOCKS)
 def test_lock_satisfies_the_project(kind: str) -> None:
-    project = tomllib.loads((ROOT / "pyproject.toml").read_text("utf-8"))["project"]
+    project = tomllib.loads((ROOT / "pyproject.toml").read_text("utf-8"))
+    asked = project["project"]["dependencies"] + (project["dependency-groups"]["tests"] if kind == "tests" else [])
     pinned: dict[str, list[str]] = {}
     for requirement in locked(kind):
         pinned.setdefault(canonicalize_name(requirement.name), []).append(str(requirement.specifier)[2:])
-    for text in project["dependencies"]:
-        asked = Requirement(text)
-        versions = pinned.get(canonicalize_name(asked.name), [])
-        assert versions and all(asked.specifier.contains(version) for version in versions), text
+    for wanted in map(Requirement, asked):
+        versions = pinned.get(canonicalize_name(wanted.name), [])
+        assert versions and all(wanted.specifier.contains(version) for version in versions), wanted
