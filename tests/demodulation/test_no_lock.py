@@ -9,6 +9,7 @@ import pytest
 
 from owlight.demodulation import demodulate
 from owlight.errors import InputError
+from owlight.statistics.checks import stay as checks
 
 
 @pytest.fixture(scope="module")
@@ -79,3 +80,11 @@ def test_missing_lane_is_refused(transmission, chain_of, link):
 def test_useless_labels_are_refused(transmission, chain_of, link, labels):
     with pytest.raises(InputError, match="reference cannot be used"):
         demodulate(transmission(link).capture, chain_of(link), labels)
+
+
+@pytest.mark.parametrize(
+    ("offsets", "finding"), [((0, 3178, 9760, 10855), "ok"), ((0, 3178, 9760, 10955), "bad"), ((), "not evaluated")]
+)
+def test_lane_map_is_judged_against_the_plan(transmission, chain_of, link, offsets, finding):
+    found = demodulate(transmission(link).capture, chain_of(link, offsets=offsets))
+    assert {c.name: c.finding for c in checks.demodulation(found)}["lane map"] == finding

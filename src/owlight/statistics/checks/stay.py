@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 
-from owlight.statistics.checks.finding import DOUBTFUL, OK, Limits, certain, judged, not_evaluated
+from owlight.statistics.checks.finding import BAD, DOUBTFUL, OK, Limits, certain, judged, not_evaluated
 from owlight.statistics.intervals import exact_interval
 from owlight.statistics.request import BerOfSnrDb
 from owlight.vocabulary.captures import Demodulation, Tributary
@@ -15,6 +15,8 @@ BEFORE_AFTER_DB = Limits(doubtful=0.03, bad=0.1)
 TIMES_THE_FLOOR = Limits(doubtful=10.0, bad=10.0, low_is_bad=True)
 PATTERN_MARGIN_DB = Limits(doubtful=6.0, bad=3.0, low_is_bad=True)
 ALIKE_FACTOR = Limits(doubtful=3.0, bad=10.0)
+OFF_PLAN_SYMBOLS = 16.0
+"""An equaliser delays its outputs by some symbols against each other; planned offsets lie hundreds apart."""
 SNR_FACTOR = Limits(doubtful=2.0, bad=5.0)
 WRONG_LOCK_FRACTIONS = (0.5, 0.375, 0.25, 0.125)
 _FEW_ERRORS = 20
@@ -50,6 +52,7 @@ def demodulation(
         return (Check("lock", subject, None, None, DOUBTFUL, f"no lock, so no BER: {found.reason}"),)
     checks = [
         pattern_margin(subject, figure(found, "sync_peak"), figure(found, "sync_second")),
+        lane_map(subject, found),
         wrong_lock(subject, found.tributaries),
         tributaries_alike(subject, found.tributaries),
     ]
@@ -72,6 +75,16 @@ def pattern_margin(subject: str, peak: float | None, second: float | None, limit
         return not_evaluated("pattern margin", subject, "the synchronisation gave no peak and second peak")
     margin_db = 20.0 * math.log10(peak / max(second, 1e-12))
     return judged("pattern margin", subject, margin_db, limits, f"the pattern stands {margin_db:.1f} dB above the next")
+
+
+def lane_map(subject: str, found: Demodulation, limit_symbols: float = OFF_PLAN_SYMBOLS) -> Check:
+    """Do the tributaries' delays differ as planned, and does every lane carry what the bench says it does?"""
+    off_plan = figure(found, "off_plan_symbols")
+    if off_plan is None:
+        return not_evaluated("lane map", subject, "no offsets between the tributaries were planned")
+    words = found.reason or f"the tributaries' delays are as planned within {off_plan:.0f} symbols"
+    finding = BAD if off_plan > limit_symbols else DOUBTFUL if found.reason else OK
+    return Check("lane map", subject, off_plan, limit_symbols, finding, words)
 
 
 def wrong_lock(subject: str, tributaries: Sequence[Tributary]) -> Check:
