@@ -11,7 +11,8 @@ def print_forecast(found: Forecast) -> None:
     """Points in order, time, disk, powers beside their limits, and how the bench will be made safe."""
     mark = " (simulated bench)" if found.simulated else ""
     print(f"{found.name}{mark}\n")
-    print(f"{len(found.stays)} stays at {found.points} points; order and simulated noise follow seed {found.seed}")
+    follows = "order and simulated noise follow" if found.simulated else "the order follows"
+    print(f"{len(found.stays)} stays at {found.points} points; {follows} seed {found.seed}")
     print(f"about {_time(found.seconds)} of bench time, {found.bytes_on_disk / 1e6:.0f} MB on disk\n")
     for number, stays in groupby(found.stays, key=lambda stay: stay.pass_number):
         print(f"pass {number}")
