@@ -108,10 +108,9 @@ def _held_out(acquired: Acquired, chain: Chain, journal: Journal) -> tuple[Compl
         y = steady(y, 0, acquired.turn)
         phase = carrier_phase(y, window)
         y *= np.exp(-1j * phase).astype(np.complex64)
-        figures |= {
-            "linewidth_hz": linewidth(phase, window) * chain.signal.symbol_rate_bd,
-            "window_symbols": float(window),
-        }
+        figures["window_symbols"] = float(window)
+        if np.isfinite(width := linewidth(phase, window)):
+            figures["linewidth_hz"] = width * chain.signal.symbol_rate_bd
     seen_imbalances(acquired, y, phase, chain, journal)
     return y, np.flatnonzero(counted)
 
