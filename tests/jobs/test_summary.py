@@ -52,6 +52,6 @@ def test_real_address_on_a_simulated_bench_is_refused(resolved: Resolved) -> Non
     laser = replace(resolved.bench.role["signal_laser"], resource="TCPIP::192.0.2.1::INSTR")
     mixed = replace(resolved.bench, role={**resolved.bench.role, "signal_laser": laser})
     served = {role: {"hislip": "a", "socket": "b"} for role in mixed.role}
-    with pytest.raises(InputError, match="signal_laser.*not served by the simulated bench"):
+    with pytest.raises(InputError, match=r"signal_laser.*not served by the simulated bench"):
         simulated_resources(mixed, served)
     assert set(simulated_resources(resolved.bench, served).values()) == {"a", "b"}

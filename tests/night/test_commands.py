@@ -116,7 +116,9 @@ def test_changed_world_is_told_by_how_much(finished: Any, command: Any, lab: Any
     differences = "\n".join(found["differences"])
     assert "world" in differences and "18 pA" in differences and "25 pA" in differences
     assert "counts: 5 of 5 points differ" in differences
-    delta_db = found["sensitivity_reproduced"]["received_power_dbm"] - found["sensitivity_original"]["received_power_dbm"]
+    delta_db = (
+        found["sensitivity_reproduced"]["received_power_dbm"] - found["sensitivity_original"]["received_power_dbm"]
+    )
     # thermal noise current up by 2.85 dB, and it is not the only noise
     assert 0.3 < delta_db < 2.9 and f"{delta_db:+.3f} dB" in differences
 

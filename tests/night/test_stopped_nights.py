@@ -83,7 +83,8 @@ def test_killed_night_is_made_safe_by_its_guard(lab: Any, start: Any, command: A
     assert words["confirmed"] is True and words["runner_pid"] == process.pid and len(words["steps"]) == 3
     found = command("show", "last", "--logbook", log, "--json").json
     assert found["state"] == "broken off" and found["stays_done"] >= 2 and found["missing"]
-    assert "guard.jsonl" in command("show", "last", "--logbook", log).out
+    assert found["safe_state"]["confirmed"] is True and found["safe_state"]["by"].startswith("the guard at ")
+    assert "confirmed by read-back, by the guard" in command("show", "last", "--logbook", log).out
 
 
 def awaited(path: Path) -> dict[str, Any]:

@@ -6,10 +6,12 @@ import json
 import shlex
 import sys
 from pathlib import Path
+from typing import Any
 
 import typer
 
 from owlight.cli.options import LOGBOOK, BenchFile, Folder, Json, Run, Seed, SequenceFile
+from owlight.errors import SafetyRefusal
 
 DEMO_SEQUENCE = "qpsk_sensitivity"
 DEMO_BENCH = "bench"
@@ -47,17 +49,19 @@ def _measure(sequence: str, bench: str, folder: Path, seed: int | None, as_json:
         print(json.dumps(found))
     else:
         print_result(found, bench)
-    raise typer.Exit(exit_status(found))
+    raise typer.Exit(SafetyRefusal.exit_status if measured.outcome.refused else exit_status(found))
 
 
-def exit_status(found: dict[str, object]) -> int:
-    """0 measured and believable; 1 a finding is bad or points are missing; 3 gave up; 130 a person stopped it."""
+def exit_status(found: dict[str, Any]) -> int:
+    """0 measured and believable; 1 a finding is bad or points are missing; 3 gave up, or the bench is not confirmed
+    safe; 130 a person stopped it."""
+    if found["safe_state"] is not None and not found["safe_state"]["confirmed"]:
+        return 3
     if found["state"] == "called off":
         return 130
     if found["state"] != "finished":
         return 3
-    findings = found["findings"]
-    bad = isinstance(findings, list) and any(check["finding"] == "bad" for check in findings)
+    bad = any(check["finding"] == "bad" for check in found["findings"])
     return 1 if bad or found.get("missing") else 0
 
 

@@ -29,7 +29,9 @@ def print_result(found: Json, bench: str | None) -> None:
     if found["safe_state"] is not None:
         print_safe_state(found["safe_state"])
     elif found["state"] == "broken off":
-        print("Safe state: not recorded, because the program died; its guard wrote what it did to guard.jsonl.")
+        print(
+            "Safe state: NOT RECORDED, because the program died and its guard has not written yet. Look at the bench."
+        )
     elif found["state"] != "measuring":
         print("Safe state: nothing was set, so nothing was made safe.")
     print(f"\nlogbook  {found['logbook']}")
@@ -87,7 +89,8 @@ def print_findings(findings: list[Json]) -> None:
 
 
 def print_safe_state(safe: Json) -> None:
-    print("Safe state: " + ("confirmed by read-back" if safe["confirmed"] else "NOT CONFIRMED"))
+    by = f", by {safe['by']}" if "by" in safe else ""
+    print("Safe state: " + ("confirmed by read-back" if safe["confirmed"] else "NOT CONFIRMED") + by)
     for step in safe["steps"]:
         word = "confirmed" if step["confirmed"] else "UNCONFIRMED"
         print(f"  {step['role']:17} {step['words']}: {word} (read back {step['read_back'] or 'nothing'})")
@@ -97,7 +100,9 @@ def _print_next(found: Json, bench: str | None) -> None:
     folder = _quoted(Path(found["logbook"]).parent)
     run = found["run_id"][:8]
     print("\nNext:")
-    print(f"  {program()} show {run} --logbook {folder}")
+    print(
+        f"  {program()} logbook --logbook {folder}" if bench is None else f"  {program()} show {run} --logbook {folder}"
+    )
     print(f"  {program()} reproduce {run} --logbook {folder}")
     if bench is None:
         print(f"  {program()} report {run} --logbook {folder}")

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 
 from owlight.bench import Bench, common_uncertainty
@@ -40,7 +41,7 @@ def conclude(plan: Plan, folder: Path, run_id: str, bench: Bench) -> Conclusion:
             reasons.append(f"{group}: {answer.words}" if group else answer.words)
             continue
         found.append(answer)
-        lines = lines or budget(request, answer)
+        lines += _budget(request, answer)
     penalties = tuple(penalty for sensitivity in found for penalty in _penalties(plan, bench, sensitivity))
     checks = _all_checks(plan, bench, finished, stays, tuple(found))
     words = " ".join(reasons) or "" if stays else "No stay gave a count."
@@ -60,10 +61,18 @@ def _request(plan: Plan, bench: Bench, stays: tuple[Stay, ...]) -> SensitivityRe
     )
 
 
+def _budget(request: SensitivityRequest, answer: Sensitivity) -> tuple[BudgetLine, ...]:
+    """Each curve has its own scatter, so its lines carry its name."""
+    lines = budget(request, answer)
+    if not answer.group:
+        return lines
+    return tuple(replace(line, component=f"{line.component} ({answer.group})") for line in lines)
+
+
 def _record_checks(finished: History) -> tuple[Check, ...]:
     """Whether records and lanes are as believed: asked of each capture, answered once for the run."""
     every = [check for stay in finished for check in stay.checks]
-    names = ("clipping", "dead lane", "duplicate capture", "record length", "lanes")
+    names = ("clipping", "dead lane", "duplicate capture", "record length", "lane map")
     return tuple(summed_up(name, [c for c in every if c.name == name], "captures") for name in names)
 
 
@@ -113,6 +122,8 @@ def _belief(plan: Plan, bench: Bench, group: str) -> ReceiverBelief | None:
     responsivity = receiver.diode_responsivity_a_per_w or splitting * (receiver.port_responsivity_a_per_w or 0.0)
     if lo_power_dbm is None or not responsivity or receiver.thermal_noise_a_per_sqrt_hz is None:
         return None
+    if receiver.lo_intensity_noise_db_per_hz is not None and receiver.common_mode_rejection_db is None:
+        return None  # what of the intensity noise is left after balancing would be a guess
     return ReceiverBelief(
         responsivity_a_per_w=responsivity,
         lo_power_dbm=lo_power_dbm,

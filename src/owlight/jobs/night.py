@@ -73,13 +73,17 @@ def _night(
     log = order.folder / "guard.jsonl"
     guard = Guard.start(plan.safe_state, silence_s=GUARD_SILENCE_S, log=log, end_after_s=_longest_s(resolved))
     clock = AttendedClock(around.clock, stop, guard.beat, around.real_time)
-    demodulator = Demodulator(plan.chain, clock.beat) if plan.chain is not None and plan.capture is not None else None
+    demodulator = (
+        Demodulator(plan.chain, clock.checkpoint) if plan.chain is not None and plan.capture is not None else None
+    )
     stamper = Stamper(clock)
     emit = _emitter(plan, order, writer)
+    confirmed = False
     try:
         try:
             bench = open_bench(resolved.bench, resolved.drivers, around.resources, emit, clock, beat=clock.beat)
         except (BenchError, StopNow) as trouble:
+            confirmed = True  # nothing was set, so there is nothing for the guard to do
             return _not_opened(stamper, emit, trouble)
         with bench:
             night = Night(
@@ -92,9 +96,14 @@ def _night(
                 demodulate_later=demodulator.later if demodulator else None,
                 announce=around.announce,
             )
-            return run(night)
+            outcome = run(night)
+            confirmed = outcome.safe_state is not None and outcome.safe_state.confirmed
+            return outcome
     finally:
-        guard.done()
+        if confirmed:
+            guard.done()
+        else:
+            guard.take_over()
         if demodulator:
             demodulator.close(at_once=stop.level >= 2)
 

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import json
 from dataclasses import asdict
 from pathlib import Path
 from typing import Any
 
 from owlight.logbook.read import curve, history, open_reader, provenance, runs
+from owlight.logbook.read.reader import Reader
 from owlight.statistics import pool
 from owlight.vocabulary.events import History
 from owlight.vocabulary.plan import Plan
@@ -36,7 +38,7 @@ def summary(folder: Path, run_text: str = "last") -> Json:
             **_stays(plan, history.history(reader, run_id), header.planned_stays),
             **_measurand(plan),
             **_results(conclusion),
-            "safe_state": _safe_state(runs.safe_state(reader, run_id)),
+            "safe_state": _safe_state(runs.safe_state(reader, run_id)) or _by_the_guard(folder, reader, header),
         }
 
 
@@ -97,3 +99,18 @@ def _safe_state(stored: Any) -> Json | None:
     if stored is None:
         return None
     return {"confirmed": stored.confirmed, "steps": [asdict(step) for step in stored.steps]}
+
+
+def _by_the_guard(folder: Path, reader: Reader, header: runs.RunHeader) -> Json | None:
+    """Of a run whose process died: what its guard wrote since, told apart by that process's id."""
+    died = {row["pid"] for row in reader.rows("SELECT pid FROM segment WHERE run = ?", header.run_id)}
+    try:
+        lines = [json.loads(line) for line in (folder / "guard.jsonl").read_text("utf-8").splitlines()]
+    except (OSError, ValueError):
+        return None
+    # an id is given out again one day: only what was written after this run began is about it
+    ours = [line for line in lines if line["runner_pid"] in died and line["utc"] >= header.started_utc]
+    found = next((line for line in reversed(ours) if "steps" in line), None)
+    if found is None:
+        return None
+    return {"confirmed": found["confirmed"], "steps": found["steps"], "by": f"the guard at {found['utc']}"}
