@@ -180,6 +180,6 @@ def test_wrong_lanes_are_named(night: Any, lab: Any, lane: dict[str, str], words
     brief = {"passes = 2": "passes = 1", 'to = "-37 dBm"': 'to = "-38.5 dBm"'}
     told = night(lab.sequence(brief), bench)
     assert told.result["state"] == "finished"
-    lanes = next(check for check in told.result["findings"] if check["name"] == "lanes")
+    lanes = next(check for check in told.result["findings"] if check["name"] == "lane map")
     assert lanes["finding"] == "doubtful" and words in lanes["words"]
     assert all(0 < point["ber"] < 0.02 for point in told.result["points"])
