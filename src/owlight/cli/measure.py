@@ -55,7 +55,8 @@ def _measure(sequence: str, bench: str, folder: Path, seed: int | None, as_json:
 def exit_status(found: dict[str, Any]) -> int:
     """0 measured and believable; 1 a finding is bad or points are missing; 3 gave up, or the bench is not confirmed
     safe; 130 a person stopped it."""
-    if found["safe_state"] is not None and not found["safe_state"]["confirmed"]:
+    safe = found.get("safe_state")
+    if safe is not None and not safe["confirmed"]:
         return 3
     if found["state"] == "called off":
         return 130

@@ -11,11 +11,11 @@ from pathlib import Path
 
 from owlight import shipped
 from owlight.errors import BenchError
-from owlight.guard.orders import BEAT, DONE, READY, Orders
+from owlight.guard.orders import BEAT, DONE, READY, TAKE_OVER, Orders
 from owlight.vocabulary.plan import SafeStep
 
 _EVERY_S = 0.1
-_END_S = 5.0
+_END_S = 8.0  # longer than the three steps of two seconds that a guard may need
 
 
 class Guard:
@@ -68,8 +68,15 @@ class Guard:
 
     def done(self) -> None:
         """The orderly end: the guard leaves without doing anything."""
+        self._leave(DONE)
+
+    def take_over(self) -> None:
+        """The runner could not confirm the safe state: the guard tries over links of its own, then leaves."""
+        self._leave(TAKE_OVER)
+
+    def _leave(self, last_word: str) -> None:
         self._over = True
-        self._say(DONE)
+        self._say(last_word)
         for pipe in (self._process.stdin, self._process.stdout):
             with suppress(OSError):
                 if pipe is not None:

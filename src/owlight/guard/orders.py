@@ -10,6 +10,7 @@ from owlight.vocabulary.plan import SafeStep
 BEAT = "beat"
 DONE = "done"
 READY = "ready"
+TAKE_OVER = "take over"
 
 
 @dataclass(frozen=True)

@@ -13,7 +13,7 @@ from dataclasses import asdict
 from pathlib import Path
 
 from owlight.clock import WallClock
-from owlight.guard.orders import DONE, READY, Orders
+from owlight.guard.orders import DONE, READY, TAKE_OVER, Orders
 from owlight.instrument.safe_state import reach_safe_state
 from owlight.vocabulary.events import Event, SafeState
 
@@ -22,6 +22,7 @@ _TERMINATE_S = 6.0
 _KILL_S = 2.0
 _LOOK_S = 0.02
 _GONE = ""
+_UNCONFIRMED = "the runner could not confirm the safe state"
 
 Lines = queue.SimpleQueue[str]
 
@@ -40,12 +41,12 @@ def main() -> int:
     reason = _watch(orders, lines)
     if not reason:
         return 0
-    how = _end_runner(orders.runner_pid, lines)
+    how = "" if reason == _UNCONFIRMED else _end_runner(orders.runner_pid, lines)
     if how == DONE:
         _append(orders, f"{reason}; it was asked to end and did so in order", None)
         return 0
     safe = reach_safe_state(orders.steps, _unheard, WallClock())
-    _append(orders, f"{reason}; {how}", safe)
+    _append(orders, "; ".join(filter(None, (reason, how))), safe)
     return 1
 
 
@@ -77,6 +78,8 @@ def _watch(orders: Orders, lines: Lines) -> str:
             continue
         if line == DONE:
             return ""
+        if line == TAKE_OVER:
+            return _UNCONFIRMED
         if line == _GONE:
             return "the runner ended without saying so"
 

@@ -72,7 +72,7 @@ def _budget(request: SensitivityRequest, answer: Sensitivity) -> tuple[BudgetLin
 def _record_checks(finished: History) -> tuple[Check, ...]:
     """Whether records and lanes are as believed: asked of each capture, answered once for the run."""
     every = [check for stay in finished for check in stay.checks]
-    names = ("clipping", "dead lane", "duplicate capture", "record length", "lane map")
+    names = ("clipping", "dead lane", "duplicate capture", "record length")
     return tuple(summed_up(name, [c for c in every if c.name == name], "captures") for name in names)
 
 

@@ -28,16 +28,7 @@ def judge_stay(
     ber_of = ber_of_snr_db(plan.signal.modulation) if plan.signal else None
     for demodulation in found:
         answers += checks.demodulation(demodulation, ber_of, BEAT_WINDOW_HZ)
-        if demodulation.status == "locked":
-            answers.append(_lanes(demodulation))
     return tuple(answers)
-
-
-def _lanes(found: Demodulation) -> Check:
-    """Every lane can be free of errors and still be another than the bench file says: its delay and sign tell."""
-    subject = f"capture {found.capture.point}/{found.capture.attempt}/{found.capture.number}"
-    finding = "doubtful" if found.reason else "ok"
-    return Check("lanes", subject, None, None, finding, found.reason or "lanes, signs and delays are as planned")
 
 
 def wanted_power_dbm(attempt: Attempt) -> float | None:

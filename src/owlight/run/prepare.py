@@ -34,6 +34,8 @@ def prepare(night: Night) -> None:
     lo_laser_power = _first(plan, Term("local_oscillator", "power"))
     if lo_laser_power is not None:
         night.bench.set(Term("local_oscillator", "power"), lo_laser_power)
+    if night.stop.level:  # whoever asked for an end before the light came on gets none
+        return
     lo_power, signal_power = _first(plan, LO_POWER), _first(plan, Term("signal_laser", "power"))
     night.bench.light_up(_number(lo_power), _number(signal_power))
     for condition in plan.conditions:

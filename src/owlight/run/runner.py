@@ -6,7 +6,7 @@ from collections import deque
 from contextlib import ExitStack
 from dataclasses import dataclass, field
 
-from owlight.errors import BenchError, StopNow
+from owlight.errors import BenchError, SafetyRefusal, StopNow
 from owlight.plan import next_attempt
 from owlight.run.night import Night
 from owlight.run.prepare import prepare
@@ -20,11 +20,12 @@ MOST_FAILED_IN_A_ROW = 3
 
 @dataclass(frozen=True)
 class Outcome:
-    """How the segment ended: `state` is finished, called off or gave up."""
+    """How the segment ended: `state` is finished, called off or gave up; `refused`: a limit would be exceeded."""
 
     state: str
     reason: str
     safe_state: SafeState | None
+    refused: bool = False
 
 
 def run(night: Night, history: History = (), segment: int = 1) -> Outcome:
@@ -42,12 +43,12 @@ def run(night: Night, history: History = (), segment: int = 1) -> Outcome:
         state, reason = ("finished", "every planned stay was taken") if done else ("called off", "stopped by a person")
     except StopNow:
         state, reason = "called off", "stopped at once by a person"
-    except BenchError as trouble:
+    except (BenchError, SafetyRefusal) as trouble:
         reason = str(trouble)
         loop.trouble = trouble
     finally:
         safe = _end(night, loop, state, reason)
-    return Outcome(state, reason, safe)
+    return Outcome(state, reason, safe, refused=isinstance(loop.trouble, SafetyRefusal))
 
 
 @dataclass
@@ -57,7 +58,7 @@ class _Loop:
     history: list[AttemptFinished]
     waiting: deque[Stay] = field(default_factory=deque)
     in_hand: Stay | None = None
-    trouble: BenchError | None = None
+    trouble: BenchError | SafetyRefusal | None = None
 
 
 def _measure(night: Night, loop: _Loop) -> bool:

@@ -47,6 +47,9 @@ class Stay:
         except DemodulationFailedError as trouble:
             return self.failed(night.stamper.stamp(), str(trouble))
         self.checks += judge_stay(self.attempt, self.received_power, demodulations, night.plan, night.bench.paper)
+        if self.received_power is not None and self.received_power.received_power_dbm is None:
+            words = "the tap read no number before or after the captures, so the stay has no received power"
+            return self._finished(night.stamper.stamp(), "failed", words, demodulations)
         bad = [check for check in self.checks if check.finding == "bad" and check.subject.startswith("capture")]
         wanted = night.plan.capture is not None
         if wanted and not demodulations:
@@ -97,10 +100,11 @@ def stay_at(night: Night, stay: Stay) -> None:
             received_power_dbm=None,
             received_power_u_db=None,
         )
+    # keys of their own: the noise of a reading must not depend on the route to it, nor on how many captures there were
+    night.announce(seed_for(night.plan.seed, "before", attempt.point.index, attempt.number), attempt.planned_time_s)
     before = _read_all(night, stay, "before")
     for number in range(1, attempt.captures + 1):
         _take(night, stay, number)
-    # a key of its own: the noise of the readings after must not depend on how many captures there were
     night.announce(seed_for(night.plan.seed, "after", attempt.point.index, attempt.number), attempt.planned_time_s)
     after = _read_all(night, stay, "after")
     if stay.received_power is not None:
@@ -154,13 +158,13 @@ def _take(night: Night, stay: Stay, number: int) -> None:
 
 def _measured(night: Night, steered: ReceivedPower, before: Reading | None, after: Reading | None) -> ReceivedPower:
     """The x axis: the tap before and after, averaged in watts, through the one calibrated record."""
-    values_w = [r.value for r in (before, after) if r is not None and r.value is not None]
+    sides = [r for r in (before, after) if r is not None and r.value is not None]
+    mean_w = sum(side.value or 0.0 for side in sides) / 2.0
     level_dbm, u_db = None, None
-    if values_w and sum(values_w) > 0:
-        mean_w = sum(values_w) / len(values_w)
+    # one side alone would be another measurand than the others' mean
+    if len(sides) == 2 and mean_w > 0.0:
         level_dbm = received_power_dbm(night.bench.paper, mean_w)
-        sds_w = [r.standard_deviation or 0.0 for r in (before, after) if r is not None and r.value is not None]
-        u_w = math.sqrt(sum(sd**2 / READINGS_A_SIDE for sd in sds_w)) / len(values_w)
+        u_w = math.sqrt(sum((side.standard_deviation or 0.0) ** 2 / READINGS_A_SIDE for side in sides)) / 2.0
         u_db = 10.0 / math.log(10.0) * u_w / mean_w
     return ReceivedPower(
         requested_dbm=steered.requested_dbm,

@@ -34,9 +34,9 @@ class Waiting(Protocol):
 class Demodulator:
     """One spawned process that demodulates captures in the order they were handed in."""
 
-    def __init__(self, chain: ChainText, beat: Callable[[], None]) -> None:
+    def __init__(self, chain: ChainText, checkpoint: Callable[[], None]) -> None:
         self._chain = chain
-        self._beat = beat
+        self._checkpoint = checkpoint
         self._pool = ProcessPoolExecutor(
             max_workers=1, mp_context=multiprocessing.get_context("spawn"), initializer=worker.initialise
         )
@@ -44,7 +44,7 @@ class Demodulator:
 
     def later(self, capture: Capture) -> Waiting:
         try:
-            return _Asked(self._pool.submit(worker.demodulate_text, capture, self._chain.text), self._beat)
+            return _Asked(self._pool.submit(worker.demodulate_text, capture, self._chain.text), self._checkpoint)
         except BrokenProcessPool as trouble:
             raise BenchError(_ENDED) from trouble
 
@@ -52,17 +52,26 @@ class Demodulator:
         self._pool.shutdown(wait=not at_once, cancel_futures=at_once)
 
 
+LONGEST_WAIT_S = 120.0
+"""A capture takes a second or two, and a first compilation of the kernels ten; a worker beyond this hangs."""
+
+
 class _Asked:
-    def __init__(self, future: Future[Demodulation], beat: Callable[[], None]) -> None:
+    def __init__(self, future: Future[Demodulation], checkpoint: Callable[[], None]) -> None:
         self._future = future
-        self._beat = beat
+        self._checkpoint = checkpoint
 
     def result(self) -> Demodulation:
+        waited_s = 0.0
         while True:
             try:
                 return self._future.result(timeout=SLICE_S)
             except NotYet:
-                self._beat()
+                waited_s += SLICE_S
+                if waited_s > LONGEST_WAIT_S:
+                    words = f"the demodulation gave no answer within {LONGEST_WAIT_S:g} s; the capture is kept"
+                    raise DemodulationFailedError(words) from None
+                self._checkpoint()
             except BrokenProcessPool as trouble:
                 raise BenchError(_ENDED) from trouble
             except Exception as trouble:

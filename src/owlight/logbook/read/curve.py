@@ -15,7 +15,7 @@ def stays(reader: Reader, run_id: str) -> tuple[Stay, ...]:
     """Every stay that ended ok with a measured power, in the order of time; its captures' counts are summed."""
     counts = _tributaries(reader, run_id)
     rows = reader.rows(
-        "SELECT * FROM stay WHERE run = ? AND outcome = 'ok' AND received_power_dbm IS NOT NULL AND captures > 0 "
+        "SELECT * FROM stay WHERE run = ? AND outcome = 'ok' AND received_power_dbm IS NOT NULL AND demodulated > 0 "
         "ORDER BY count",
         run_id,
     )
@@ -33,7 +33,7 @@ def stays(reader: Reader, run_id: str) -> tuple[Stay, ...]:
             tap_after_w=row["tap_after_w"],
             tributaries=counts[row["point"], row["attempt"]],
             captures_locked=row["locked"],
-            captures_total=row["captures"],
+            captures_total=row["demodulated"],  # an implausible record says nothing of lock
         )
         for position, row in enumerate(rows)
     )

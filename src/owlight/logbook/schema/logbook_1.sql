@@ -161,6 +161,8 @@ CREATE VIEW stay AS                         -- one row a stay, with what the nig
     (SELECT count(*) FROM capture c WHERE (c.run, c.point, c.attempt) = (a.run, a.point, a.attempt)) AS captures,
     (SELECT count(*) FROM demodulation d WHERE (d.analysis, d.point, d.attempt) = (n.analysis, a.point, a.attempt)
       AND d.status = 'locked') AS locked,
+    (SELECT count(*) FROM demodulation d WHERE (d.analysis, d.point, d.attempt) = (n.analysis, a.point, a.attempt))
+      AS demodulated,
     (SELECT sum(t.errors) FROM tributary t WHERE (t.analysis, t.point, t.attempt) = (n.analysis, a.point, a.attempt))
       AS errors,
     (SELECT sum(t.bits) FROM tributary t WHERE (t.analysis, t.point, t.attempt) = (n.analysis, a.point, a.attempt))

@@ -40,7 +40,7 @@ def run_checks(evidence: Evidence) -> tuple[Check, ...]:
     for group in groups(evidence.stays) or tuple(dict.fromkeys(p.group for p in evidence.points)):
         checks += [_of_group(check, group) for check in _curve_checks(evidence, group)]
     by_capture = [c for found in evidence.demodulations for c in _captures(found, evidence)]
-    for name in ("pattern margin", "wrong lock", "tributaries alike", "SNR against BER", "beat frequency"):
+    for name in ("pattern margin", "lane map", "wrong lock", "tributaries alike", "SNR against BER", "beat frequency"):
         checks.append(summed_up(name, [check for check in by_capture if check.name == name], "captures"))
     checks.append(summed_up("power before and after", list(_powers(evidence)), "stays"))
     checks.append(summed_up("meter floor", list(_floors(evidence)), "stays"))
