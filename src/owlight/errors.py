@@ -42,6 +42,10 @@ class BenchError(OwlightError):
     exit_status = 3
 
 
+class InUseError(BenchError):
+    """Somebody else is measuring with an instrument of this bench; theirs is not to be darkened."""
+
+
 class LinkError(BenchError):
     """A link fault: the session is poisoned; `maybe_executed` forbids repeating the message."""
 
@@ -70,6 +74,10 @@ class StorageError(OwlightError):
     """The logbook could not take what it was given; what it had taken before is kept."""
 
     exit_status = 5
+
+
+class BusyError(StorageError):
+    """Another run writes to this logbook."""
 
 
 class StopNow(BaseException):

@@ -15,7 +15,7 @@ from typing import Any
 import numpy as np
 import pytest
 
-from owlight.errors import InputError, StorageError
+from owlight.errors import BusyError, InputError, StorageError
 from owlight.logbook import Logbook
 from owlight.logbook.codec import from_json, to_json
 from owlight.logbook.read import captures, curve, history, open_reader, provenance, runs
@@ -280,3 +280,9 @@ def test_sqlite3_command_prints_curve(told: Told) -> None:
     command = ["sqlite3", "-readonly", str(told[0] / "logbook.db"), query]
     printed = subprocess.run(command, capture_output=True, text=True, check=True).stdout
     assert printed.splitlines() == ["-39.0|2003|800000", "-38.0|4003|800000"]
+
+
+def test_busy_logbook_is_told_apart(tmp_path: Path) -> None:
+    """The demo goes to another folder then; any other trouble of storage ends it."""
+    with Logbook.open(tmp_path), pytest.raises(BusyError):
+        Logbook.open(tmp_path)

@@ -33,7 +33,7 @@ def print_result(found: Json, bench: str | None) -> None:
             "Safe state: NOT RECORDED, because the program died and its guard has not written yet. Look at the bench."
         )
     elif found["state"] != "measuring":
-        print("Safe state: nothing was set, so nothing was made safe.")
+        print("Safe state: left as it was, since another run is using the bench.")
     print(f"\nlogbook  {found['logbook']}")
     if "report" in found:
         print(f"report   {found['report']}")

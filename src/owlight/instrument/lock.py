@@ -15,7 +15,7 @@ from dataclasses import asdict, dataclass
 from pathlib import Path
 from typing import IO
 
-from owlight.errors import BenchError
+from owlight.errors import InUseError
 
 
 @dataclass(frozen=True)
@@ -78,9 +78,9 @@ def _who() -> str:
         return "an unknown user"
 
 
-def _refused(serial_number: str, holder: Holder | None, path: Path) -> BenchError:
+def _refused(serial_number: str, holder: Holder | None, path: Path) -> InUseError:
     held = "somebody" if holder is None else str(holder)
-    return BenchError(
+    return InUseError(
         f"The instrument with serial number {serial_number} is in use by {held}. Nothing was set. "
         f"Wait, or end that run; if it is certain that nobody uses it, delete {path}."
     )

@@ -7,9 +7,10 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
 
-from owlight.errors import BenchError, StopNow, StorageError
+from owlight.errors import BenchError, InUseError, StopNow, StorageError
 from owlight.guard import Guard
 from owlight.instrument.open_bench import open_bench
+from owlight.instrument.safe_state import reach_safe_state
 from owlight.jobs.bench_session import Surroundings, surroundings
 from owlight.jobs.conclude import conclude
 from owlight.jobs.planning import plan_of
@@ -83,8 +84,9 @@ def _night(
         try:
             bench = open_bench(resolved.bench, resolved.drivers, around.resources, emit, clock, beat=clock.beat)
         except (BenchError, StopNow) as trouble:
-            confirmed = True  # nothing was set, so there is nothing for the guard to do
-            return _not_opened(stamper, emit, trouble)
+            confirmed = True  # nothing was set here, so there is nothing for the guard to do
+            clock.only_beat()
+            return _not_opened(plan, stamper, emit, trouble, clock)
         with bench:
             night = Night(
                 plan=plan,
@@ -112,15 +114,22 @@ def _longest_s(resolved: Resolved) -> float | None:
     return None if resolved.sequence is None else longest_unattended_s(resolved.bench, resolved.sequence)
 
 
-def _not_opened(stamper: Stamper, emit: Emit, trouble: BenchError | StopNow) -> Outcome:
-    """No setting was sent, so there is nothing to make safe; the reason is kept with the run."""
+def _not_opened(
+    plan: Plan, stamper: Stamper, emit: Emit, trouble: BenchError | StopNow, clock: AttendedClock
+) -> Outcome:
+    """This run set nothing, but light of a previous user may be on: what can be reached is made safe, unless another
+    run is measuring with it."""
     stopped = isinstance(trouble, StopNow)
     state, reason = ("called off", "stopped by a person") if stopped else ("gave up", str(trouble))
     emit(SegmentStarted(stamper.stamp(), 1, "started"))
     if not stopped:
         emit(Note(stamper.stamp(), "fault", reason, getattr(trouble, "role", "")))
+    safe = None
+    if not isinstance(trouble, InUseError):
+        safe = reach_safe_state(plan.safe_state, emit, clock, stamper=stamper)
+        emit(safe)
     emit(SegmentEnded(stamper.stamp(), state, reason))
-    return Outcome(state, reason, None)
+    return Outcome(state, reason, safe)
 
 
 def _emitter(plan: Plan, order: Order, writer: RunWriter) -> Emit:

@@ -53,9 +53,7 @@ class Logbook:
                 "Name a folder of yours with --logbook."
             ) from trouble
         if lock is None:
-            raise StorageError(
-                f"Another run writes to {folder}: {holder(path)}. Wait for it, or name another --logbook."
-            )
+            raise BusyError(f"Another run writes to {folder}: {holder(path)}. Wait for it, or name another --logbook.")
         try:
             _keep_reserve(folder / "reserve.bin")
             return cls(folder, lock, open_logbook(folder / "logbook.db"))
