@@ -10,7 +10,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import IO, Self
 
-from owlight.errors import BusyError, StorageError
+from owlight.errors import BusyError, InputError, StorageError
 from owlight.logbook.captures import CapturesFile, captures_path
 from owlight.logbook.codec import from_json, to_json
 from owlight.logbook.database import open_logbook, transaction, troubles
