@@ -183,6 +183,34 @@ def test_missing_logbook_is_input_error(tmp_path: Path) -> None:
         open_reader(tmp_path)
 
 
+def test_foreign_file_is_left_alone(tmp_path: Path) -> None:
+    """Another program's file of that name: neither written to nor taken for a logbook; its bytes stay."""
+    path = tmp_path / "logbook.db"
+    with sqlite3.connect(path) as connection:
+        connection.execute("CREATE TABLE recipe (name TEXT)")
+    connection.close()
+    before = path.read_bytes()
+    with pytest.raises(StorageError, match=r"not a logbook of this program; nothing of it was changed\. Name another"):
+        Logbook.open(tmp_path)
+    with pytest.raises(InputError, match=r"is not a logbook of this program\. Name another folder"):
+        open_reader(tmp_path)
+    assert path.read_bytes() == before
+
+
+def test_empty_file_is_no_logbook_yet(tmp_path: Path) -> None:
+    path = tmp_path / "logbook.db"
+    path.touch()
+    with pytest.raises(InputError, match="is empty: it is not a logbook"):
+        open_reader(tmp_path)
+    Logbook.open(tmp_path).close()
+    open_reader(tmp_path)
+
+
+def test_trouble_in_reading_is_not_called_writing(told: Told) -> None:
+    with open_reader(told[0]) as reader, pytest.raises(StorageError, match="could not be read"):
+        reader.rows("SELECT nothing FROM nowhere")
+
+
 def test_full_disk_is_two_sentences(
     tmp_path: Path, plan: Plan, story: Any, provenance: Any, tell_run: Callable[..., list[AttemptFinished]]
 ) -> None:

@@ -11,7 +11,7 @@ from typing import Any
 import numpy as np
 
 from owlight.errors import StorageError
-from owlight.logbook.database import open_captures, open_read_only, transaction, troubles
+from owlight.logbook.database import CAPTURES_ID, open_captures, open_read_only, transaction, troubles
 from owlight.vocabulary.captures import Capture, CaptureId, Lane
 from owlight.vocabulary.values import Stamp
 
@@ -96,9 +96,9 @@ def _row(capture: Capture, position: int, lane: Lane) -> tuple[object, ...]:
 
 def load(path: Path, identifier: CaptureId) -> Capture:
     """A stored capture with its scaling; clipped fraction, seed and time stand in the logbook, not here."""
-    connection = open_read_only(path)
+    connection = open_read_only(path, CAPTURES_ID)
     try:
-        with troubles(path):
+        with troubles(path, "read"):
             key = (identifier.point, identifier.attempt, identifier.number)
             rows = connection.execute(
                 "SELECT * FROM waveform WHERE point = ? AND attempt = ? AND number = ? ORDER BY position", key

@@ -15,12 +15,13 @@ from typing import Any
 
 import numpy as np
 
-from owlight.errors import StorageError
+from owlight.errors import InputError, StorageError
 
 VERSION = 1
 BUSY_MS = 10_000
-_LOGBOOK_ID = 0x6F776C31  # "owl1": `file` and our opener recognise a logbook
-_CAPTURES_ID = 0x6F776C32
+LOGBOOK_ID = 0x6F776C31  # "owl1": `file` and our opener recognise a logbook
+CAPTURES_ID = 0x6F776C32
+_WHAT = {LOGBOOK_ID: "logbook", CAPTURES_ID: "captures file"}
 
 
 def _plain(value: Any) -> Any:
@@ -32,8 +33,8 @@ for _scalar in (np.int8, np.int16, np.int32, np.int64, np.uint8, np.uint16, np.u
 
 
 @contextmanager
-def troubles(path: Path) -> Iterator[None]:
-    """Any SQLite failure becomes a StorageError that says what is safe and what to do."""
+def troubles(path: Path, done: str = "written") -> Iterator[None]:
+    """Any SQLite failure becomes a StorageError that says what is safe and what to do; `done`: written or read."""
     try:
         yield
     except sqlite3.OperationalError as trouble:
@@ -43,15 +44,15 @@ def troubles(path: Path) -> Iterator[None]:
             advice = "Free disk space, then measure the missing points again."
         elif "locked" in words or "busy" in words:
             advice = "Close the program that holds the file open, then start again."
-        raise StorageError(f"{path} could not be written ({words}); what it held before is safe. {advice}") from trouble
+        raise StorageError(f"{path} could not be {done} ({words}); what it held before is safe. {advice}") from trouble
     except OSError as trouble:
         raise StorageError(
-            f"{path} could not be written ({trouble.strerror}); what it held before is safe. "
+            f"{path} could not be {done} ({trouble.strerror}); what it held before is safe. "
             "Look at the disk and the folder's permissions, then start again."
         ) from trouble
     except sqlite3.Error as trouble:
         raise StorageError(
-            f"{path} refused what it was given or is damaged ({trouble}); nothing of it was changed. "
+            f"{path} is damaged or refused what was asked of it ({trouble}); nothing of it was changed. "
             "Copy the file before anything else, then look at it with sqlite3's integrity_check."
         ) from trouble
 
@@ -59,38 +60,51 @@ def troubles(path: Path) -> Iterator[None]:
 def open_logbook(path: Path) -> sqlite3.Connection:
     """The one read-write connection, made and brought up to date."""
     with troubles(path):
-        connection = _writer(path, page_size=4096, autocheckpoint=1000)
-        _bring_up_to_date(connection, "logbook", _LOGBOOK_ID, path)
+        connection = _writer(path, LOGBOOK_ID, page_size=4096, autocheckpoint=1000)
+        _bring_up_to_date(connection, "logbook", LOGBOOK_ID, path)
         return connection
 
 
 def open_captures(path: Path) -> sqlite3.Connection:
     """64 KiB pages: twice the write rate of 4 KiB ones for rows of megabytes."""
     with troubles(path):
-        connection = _writer(path, page_size=65536, autocheckpoint=256)
-        _bring_up_to_date(connection, "captures", _CAPTURES_ID, path)
+        connection = _writer(path, CAPTURES_ID, page_size=65536, autocheckpoint=256)
+        _bring_up_to_date(connection, "captures", CAPTURES_ID, path)
         return connection
 
 
-def open_read_only(path: Path) -> sqlite3.Connection:
-    """A reader cannot hold up the writer: read-only, and every query of ours is short."""
+def open_read_only(path: Path, application_id: int) -> sqlite3.Connection:
+    """A reader cannot hold up the writer: read-only, and every query of ours is short. InputError when not ours."""
     if not path.is_file():
         raise StorageError(f"There is no {path.name} in {path.parent}. Name the folder that holds it.")
-    with troubles(path):
+    with troubles(path, "read"):
         connection = sqlite3.connect(f"{path.resolve().as_uri()}?mode=ro", uri=True, isolation_level=None)
         connection.row_factory = sqlite3.Row
         connection.execute(f"PRAGMA busy_timeout = {BUSY_MS}")
         connection.execute("PRAGMA trusted_schema = OFF")
+        if _pragma(connection, "application_id") != application_id:
+            empty = "empty: it is " if _is_empty(connection) else ""
+            connection.close()
+            raise InputError(
+                f"{path} is {empty}not a {_WHAT[application_id]} of this program. Name another folder with --logbook."
+            )
         _refuse_newer(connection, path)
         return connection
 
 
-def _writer(path: Path, page_size: int, autocheckpoint: int) -> sqlite3.Connection:
+def _writer(path: Path, application_id: int, page_size: int, autocheckpoint: int) -> sqlite3.Connection:
     connection = sqlite3.connect(path, isolation_level=None)
     connection.row_factory = sqlite3.Row
+    connection.execute(f"PRAGMA busy_timeout = {BUSY_MS}")
+    # before any pragma that writes: somebody else's file is not ours to change
+    if _pragma(connection, "application_id") != application_id and not _is_empty(connection):
+        connection.close()
+        raise StorageError(
+            f"{path} is not a {_WHAT[application_id]} of this program; nothing of it was changed. "
+            "Name another folder with --logbook."
+        )
     for pragma in (
         f"page_size = {page_size}",
-        f"busy_timeout = {BUSY_MS}",
         "journal_mode = WAL",
         "synchronous = FULL",
         f"wal_autocheckpoint = {autocheckpoint}",
@@ -102,12 +116,16 @@ def _writer(path: Path, page_size: int, autocheckpoint: int) -> sqlite3.Connecti
     return connection
 
 
-def _version(connection: sqlite3.Connection) -> int:
-    return int(connection.execute("PRAGMA user_version").fetchone()[0])
+def _pragma(connection: sqlite3.Connection, name: str) -> int:
+    return int(connection.execute(f"PRAGMA {name}").fetchone()[0])
+
+
+def _is_empty(connection: sqlite3.Connection) -> bool:
+    return connection.execute("SELECT 1 FROM sqlite_master LIMIT 1").fetchone() is None
 
 
 def _refuse_newer(connection: sqlite3.Connection, path: Path) -> int:
-    version = _version(connection)
+    version = _pragma(connection, "user_version")
     if version > VERSION:
         raise StorageError(
             f"{path} was written by a newer version of this program (schema {version}, known {VERSION}); "

@@ -7,7 +7,7 @@ from pathlib import Path
 from typing import Any, Self
 
 from owlight.errors import InputError
-from owlight.logbook.database import open_read_only, troubles
+from owlight.logbook.database import LOGBOOK_ID, open_read_only, troubles
 
 
 class Reader:
@@ -18,7 +18,7 @@ class Reader:
         self._connection = connection
 
     def rows(self, query: str, *values: object) -> list[sqlite3.Row]:
-        with troubles(self.folder / "logbook.db"):
+        with troubles(self.folder / "logbook.db", "read"):
             return self._connection.execute(query, values).fetchall()
 
     def value(self, query: str, *values: object) -> Any:
@@ -37,4 +37,4 @@ def open_reader(folder: Path) -> Reader:
     path = folder / "logbook.db"
     if not path.is_file():
         raise InputError(f"There is no logbook in {folder}. Name its folder with --logbook.")
-    return Reader(folder, open_read_only(path))
+    return Reader(folder, open_read_only(path, LOGBOOK_ID))
