@@ -80,7 +80,10 @@ class Logbook:
         return self._writer(run, plan, software_id)
 
     def continue_run(self, run: str, provenance: Provenance) -> RunWriter:
-        """Go on with a stored run in a new segment; captures whose stay was never finished are dropped."""
+        """Go on with a stored run in a new segment; captures whose stay was never finished are dropped.
+
+        No command calls it yet: it is where resuming a run will begin.
+        """
         with troubles(self.folder / "logbook.db"), transaction(self._connection):
             found = self._connection.execute("SELECT plan_json FROM run WHERE run = ?", (run,)).fetchone()
             if found is None:

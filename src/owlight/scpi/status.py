@@ -9,19 +9,6 @@ from owlight.scpi.words import parse_number
 _HIGHEST = 65_535  # some instruments use bit 15 all the same
 
 
-class StandardEvent(IntEnum):
-    """Standard event register, `*ESR?` (IEEE 488.2, 11.5.1)."""
-
-    OPERATION_COMPLETE = 0
-    REQUEST_CONTROL = 1
-    QUERY_ERROR = 2
-    DEVICE_ERROR = 3
-    EXECUTION_ERROR = 4
-    COMMAND_ERROR = 5
-    USER_REQUEST = 6
-    POWER_ON = 7
-
-
 class Operation(IntEnum):
     """Operation condition register, `STATus:OPERation:CONDition?` (SCPI-99 volume 1, 9)."""
 

@@ -141,12 +141,6 @@ class World:
     receiver: Receiver = Receiver()
     oscilloscope: Oscilloscope = Oscilloscope()
 
-    @property
-    def plane_minus_tap_db(self) -> float:
-        """True level at the receiver's input less true level at the meter, without drift."""
-        path = self.path
-        return path.tap_to_meter_loss_db - path.tap_to_receiver_loss_db + path.tap_error_db
-
 
 def read_world(text: str, file: str) -> Document[World]:
     """A world that can be served: every role has an instrument and a serial number of its own."""
