@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 from pathlib import Path
 from typing import Any
 
@@ -117,6 +118,7 @@ CODES = np.random.default_rng(1).integers(-90, 90, (4, 4000)).astype(np.int8)
         ({"codes": CODES[:3]}, "3 x 4000"),
         ({"codes": CODES[:, :0]}, "no sample"),
         ({"codes": CODES * np.array([[1], [0], [1], [1]], np.int8)}, "dead or stuck"),
+        ({"codes": CODES * np.array([[1], [0], [1], [1]], np.int8)}, "Record again"),
         ({"codes": CODES, "volts_per_code": np.array(np.inf)}, "volts_per_code"),
     ],
     ids=lambda value: value if isinstance(value, str) else "",
@@ -131,6 +133,9 @@ def test_unusable_records_are_told(owlight: Any, tmp_path: Path, arrays: dict[st
     ("option", "value", "words"),
     [
         ("--symbol-rate", "32 GHz", "a symbol rate (Bd) is needed"),
+        ("--symbol-rate", "32 GHz", 'for example "32 GBd"'),
+        ("--symbol-rate", "1e400 Bd", "not possible"),
+        ("--sample-rate", "20 GS/s", "At least 35.2 GS/s"),
         ("--symbol-rate", "32", "--symbol-rate"),
         ("--symbol-rate", "0 GBd", "above zero"),
         ("--symbol-rate", "-32 GBd", "above zero"),
@@ -147,6 +152,50 @@ def test_unusable_arguments_are_told(owlight: Any, tmp_path: Path, option: str, 
     np.savez(tmp_path / "record.npz", codes=CODES)
     answer = owlight("demodulate", tmp_path / "record.npz", *RATES, option, value)
     assert answer.status == INPUT and answer.out == "" and words in answer.err
+
+
+@pytest.mark.parametrize(
+    ("labels", "words"),
+    [
+        (np.zeros((2, 127)), "float64 numbers"),
+        (np.zeros((3, 127), np.int8), "3 x 127"),
+        (np.zeros((2, 127, 1), np.int8), "2 x 127 x 1"),
+        (np.zeros((2, 0), np.int8), "2 x 0"),
+        (np.full((2, 127), 4), "labels from 4 to 4"),
+        (np.full((2, 127), True), "bool"),
+    ],
+    ids=lambda value: value if isinstance(value, str) else "",
+)
+def test_unusable_labels_are_told(owlight: Any, tmp_path: Path, labels: Any, words: str) -> None:
+    np.savez(tmp_path / "record.npz", codes=CODES)
+    np.save(tmp_path / "labels.npy", labels)
+    answer = owlight("demodulate", tmp_path / "record.npz", *RATES, "--reference", tmp_path / "labels.npy")
+    assert answer.status == INPUT and answer.out == "" and words in answer.err and "integers from 0 to 3" in answer.err
+
+
+def test_other_files_are_told_in_own_words(owlight: Any, tmp_path: Path) -> None:
+    """Not in NumPy's, which would have a stranger's pickle loaded, nor with numbers of the operating system."""
+    (tmp_path / "text").write_text("1 2 3")
+    np.savez(tmp_path / "record.npz", codes=CODES)
+    for file, reference, words in (
+        ("text", "15", "cannot be read as a NumPy archive"),
+        ("none", "15", "There is no file"),
+        ("record.npz", "text", "is no NumPy file"),
+        ("record.npz", "none", "there is no file"),
+        ("record.npz", "record.npz", "an archive, not one array"),
+    ):
+        named = reference if reference == "15" else tmp_path / reference
+        answer = owlight("demodulate", tmp_path / file, *RATES, "--reference", named)
+        assert answer.status == INPUT and words in answer.err, answer.err
+        assert "pickle" not in answer.err and "Errno" not in answer.err
+
+
+def test_codes_are_not_called_volts(owlight: Any, tmp_path: Path) -> None:
+    for more, name in (({}, "rms_xi_codes"), ({"volts_per_code": np.array(1e-3)}, "rms_xi_v")):
+        np.savez(tmp_path / "record.npz", codes=CODES, **more)
+        answer = owlight("demodulate", tmp_path / "record.npz", *RATES, "--json")
+        figures = json.loads(answer.out)["stages"][0]["figures"]
+        assert name in figures and len([key for key in figures if key.startswith("rms_xi")]) == 1
 
 
 def test_truncated_archive_is_told(owlight: Any, tmp_path: Path) -> None:

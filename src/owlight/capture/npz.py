@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import hashlib
 import zipfile
+import zlib
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -21,7 +23,7 @@ _PILED_UP = 3.0
 def read_npz(file: Path, lanes: tuple[str, ...], sample_rate_hz: float) -> Capture:
     """The capture in `codes` (lanes x samples, integers of 8 to 16 bits), its lanes named in their order.
 
-    `volts_per_code` (one, or one a lane) may stand beside it. InputError says what is wrong and what to give.
+    `volts_per_code` (one, or one a lane) may stand beside it; without it the lanes are not `in_volts`. InputError says what is wrong and what to give.
     """
     codes, volts_per_code = _arrays(file)
     wanted = f"Give `codes` as lanes x samples of integers, with {len(lanes)} lanes ({', '.join(lanes)})."
@@ -35,25 +37,33 @@ def read_npz(file: Path, lanes: tuple[str, ...], sample_rate_hz: float) -> Captu
         raise InputError(f"`codes` in {file} are {codes.dtype}, not integers. {wanted}")
     if not sample_rate_hz > 0.0:
         raise InputError(f"A sample rate of {sample_rate_hz} S/s is not possible. Give one above zero.")
-    scales = _scales(file, volts_per_code, len(lanes))
+    scales = _scales(file, np.ones(1) if volts_per_code is None else volts_per_code, len(lanes))
     made = tuple(_lane(name, row, scale, file) for name, row, scale in zip(lanes, codes, scales, strict=True))
+    if volts_per_code is None:
+        made = tuple(replace(lane, in_volts=False) for lane in made)
     return Capture(CaptureId(0, 0, 0), Stamp("", 0.0, 0), sample_rate_hz, made, 0)
 
 
-def _arrays(file: Path) -> tuple[npt.NDArray[Any], npt.NDArray[Any]]:
+def _arrays(file: Path) -> tuple[npt.NDArray[Any], npt.NDArray[Any] | None]:
+    what_to_do = "Give a .npz file saved with numpy.savez(file, codes=...)."
+    if not file.exists():
+        raise InputError(f"There is no file {file}. {what_to_do}")
     try:
         archive = np.load(file, allow_pickle=False)
         if isinstance(archive, np.ndarray):
-            raise ValueError("it is a single array")
+            raise InputError(f"{file} holds a single array without a name. {what_to_do}")
         with archive:
             if "codes" not in archive.files:
                 held = ", ".join(archive.files) or "nothing"
                 raise InputError(f"{file} has no array `codes`, but {held}. Save it with numpy.savez(file, codes=...).")
-            scale = archive["volts_per_code"] if "volts_per_code" in archive.files else np.ones(1)
-            return archive["codes"], np.asarray(scale)
-    except (OSError, ValueError, EOFError, zipfile.BadZipFile) as trouble:
-        words = f"{file} cannot be read as a NumPy archive ({trouble})"
-        raise InputError(f"{words}. Give a .npz file saved with numpy.savez(file, codes=...).") from trouble
+            scale = archive["volts_per_code"] if "volts_per_code" in archive.files else None
+            return archive["codes"], scale
+    except OSError as trouble:
+        raise InputError(f"{file} cannot be read ({trouble.strerror or trouble}). {what_to_do}") from trouble
+    except (ValueError, EOFError, RuntimeError, zipfile.BadZipFile, zlib.error) as trouble:
+        # NumPy's own words advise to allow pickles, which would run whatever the file says
+        words = f"{file} cannot be read as a NumPy archive: it is something else, damaged, or holds Python objects"
+        raise InputError(f"{words}. {what_to_do}") from trouble
 
 
 def _scales(file: Path, volts_per_code: npt.NDArray[Any], lanes: int) -> tuple[float, ...]:

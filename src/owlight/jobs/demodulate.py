@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+import zipfile
 from collections.abc import Callable
 from dataclasses import asdict, dataclass
 from pathlib import Path
@@ -33,10 +35,11 @@ def demodulate_file(file: Path, asked: FileSignal) -> dict[str, Any]:
     from owlight.demodulation import demodulate
     from owlight.demodulation.chain import Chain, LaneBelief, make_chain
 
-    labels, order = _reference(asked.reference)
+    symbol_rate_bd, sample_rate_hz = _rates(asked)
+    labels, order = _reference(asked.reference, asked.polarisations)
     signal = Signal(
         modulation=asked.modulation,
-        symbol_rate_bd=_quantity("--symbol-rate", asked.symbol_rate, "Bd"),
+        symbol_rate_bd=symbol_rate_bd,
         polarisations=asked.polarisations,
         pulse_shape="root raised cosine",
         rolloff=asked.rolloff,
@@ -44,36 +47,64 @@ def demodulate_file(file: Path, asked: FileSignal) -> dict[str, Any]:
         tributary_offsets=(),
     )
     lanes = _LANES[asked.polarisations]
-    capture = read_npz(file, lanes, _quantity("--sample-rate", asked.sample_rate, "Hz"))
+    capture = read_npz(file, lanes, sample_rate_hz)
     bad = [check for check in check_capture(capture, frozenset(), 1) if check.finding == "bad"]
     if bad:
-        raise InputError(f"{file} cannot be demodulated: {'; '.join(check.words for check in bad)}")
+        words = f"{file} cannot be demodulated: {'; '.join(check.words for check in bad)}"
+        raise InputError(
+            f"{words}. Record again: every lane connected, within the converter's range, all equally long."
+        )
     name = "dual polarisation" if asked.polarisations == 2 else "single polarisation"
     chain = make_chain(name, signal, tuple(LaneBelief(lane, 0.0, False) for lane in lanes), None)
     return as_json(demodulate(capture, Chain.from_text(chain.text), labels))
 
 
-def _quantity(option: str, text: str, unit: str) -> float:
+def _rates(asked: FileSignal) -> tuple[float, float]:
+    symbol_rate_bd = _rate("--symbol-rate", asked.symbol_rate, "Bd", "32 GBd")
+    sample_rate_hz = _rate("--sample-rate", asked.sample_rate, "Hz", "80 GS/s")
+    least_hz = symbol_rate_bd * (1 + asked.rolloff)
+    if sample_rate_hz < least_hz:
+        # each lane is real with half the occupied band (Nyquist)
+        words = f"--sample-rate: {asked.sample_rate!r} is below symbol rate times (1 + roll-off)"
+        raise InputError(f"{words}, so the signal would fold. At least {least_hz / 1e9:.6g} GS/s are needed.")
+    return symbol_rate_bd, sample_rate_hz
+
+
+def _rate(option: str, text: str, unit: str, example: str) -> float:
     try:
         value = parse(text, unit)
     except ValueError as trouble:
-        raise InputError(f"{option}: {trouble}.") from None
-    if not value > 0:
+        raise InputError(f'{option}: {trouble}. Write for example "{example}".') from None
+    if not 0 < value < math.inf:
         raise InputError(f"{option}: {text!r} is not possible. Give a rate above zero.")
     return value
 
 
-def _reference(text: str) -> tuple[Any, int]:
+def _reference(text: str, polarisations: int) -> tuple[Any, int]:
+    """Labels, or the order of a pattern."""
     if text.isdecimal():
         return None, int(text)
     import numpy as np
 
+    wanted = "Give a pattern's order such as 15, or a .npy file of labels"
+    wanted += f": integers from 0 to 3 (I bit * 2 + Q bit), {polarisations} x pattern length."
+    if not Path(text).exists():
+        raise InputError(f"--reference: there is no file {text!r}. {wanted}")
     try:
         labels = np.load(text, allow_pickle=False)
-    except (OSError, ValueError) as trouble:
-        words = f"--reference {text!r} is neither a pattern order nor a readable .npy file ({trouble})"
-        raise InputError(f"{words}. Give an order such as 15, or labels as polarisations x pattern length.") from None
-    return np.atleast_2d(labels), 0
+    except OSError as trouble:
+        raise InputError(f"--reference: {text!r} cannot be read ({trouble.strerror or trouble}). {wanted}") from None
+    except (ValueError, EOFError, zipfile.BadZipFile):
+        raise InputError(f"--reference: {text!r} is no NumPy file, or is damaged. {wanted}") from None
+    if not isinstance(labels, np.ndarray) or not np.issubdtype(labels.dtype, np.integer):
+        held = f"{labels.dtype} numbers" if isinstance(labels, np.ndarray) else "an archive"
+        raise InputError(f"--reference: {text!r} holds {held}, not one array of integers. {wanted}")
+    labels = np.atleast_2d(labels)
+    if labels.ndim != 2 or len(labels) != polarisations or labels.size == 0:
+        raise InputError(f"--reference: {text!r} has the shape {' x '.join(map(str, labels.shape))}. {wanted}")
+    if labels.min() < 0 or labels.max() > 3:
+        raise InputError(f"--reference: {text!r} has labels from {labels.min()} to {labels.max()}. {wanted}")
+    return labels, 0
 
 
 def as_json(found: Demodulation) -> dict[str, Any]:

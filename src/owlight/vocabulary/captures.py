@@ -24,7 +24,8 @@ class CaptureId:
 class Lane:
     """One lane, `XI`, `XQ`, `YI`, `YQ` (or `I`, `Q`): volts = codes * volts_per_code + offset_v.
 
-    Compare `sha256` (of the little-endian code bytes), never the arrays.
+    Without `in_volts` nobody told the scale: what stands for volts is then codes. Compare `sha256` (of the little-endian
+    code bytes), never the arrays.
     """
 
     name: str
@@ -33,6 +34,7 @@ class Lane:
     offset_v: float
     clipped_fraction: float
     sha256: str
+    in_volts: bool = True
 
 
 @dataclass(frozen=True, eq=False)

@@ -21,7 +21,8 @@ Figures = dict[str, float]
 def scale(lanes: Sequence[Lane], inverted: Sequence[bool], remove_mean: bool = True) -> tuple[Complex, Figures]:
     """Codes to volts, lanes to polarisations: (polarisations, samples) complex64 from lanes in the order I, Q, I, Q.
 
-    An inverted lane changes its sign. Figures: mean and rms in volts and clipped fraction, of each lane.
+    An inverted lane changes its sign. Figures: mean and rms in volts (or codes, as their names say) and clipped fraction,
+    of each lane.
 
     >>> lanes = [Lane(name, np.array([1, 3], np.int8), 0.5, 0.0, 0.0, "") for name in "IQ"]
     >>> scale(lanes, [False, True])[0].tolist()
@@ -38,8 +39,9 @@ def scale(lanes: Sequence[Lane], inverted: Sequence[bool], remove_mean: bool = T
         (half.imag if number % 2 else half.real)[:] = volts
         mean_v = lane.offset_v + (-mean if turned else mean)
         key = lane.name.lower()
-        figures[f"mean_{key}_v"] = mean_v
-        figures[f"rms_{key}_v"] = float(np.sqrt(np.vdot(volts, volts) / len(volts)))
+        unit = "v" if lane.in_volts else "codes"
+        figures[f"mean_{key}_{unit}"] = mean_v
+        figures[f"rms_{key}_{unit}"] = float(np.sqrt(np.vdot(volts, volts) / len(volts)))
         figures[f"clipped_fraction_{key}"] = lane.clipped_fraction
     return polarisations, figures
 
