@@ -183,3 +183,20 @@ def test_wrong_lanes_are_named(night: Any, lab: Any, lane: dict[str, str], words
     lanes = next(check for check in told.result["findings"] if check["name"] == "lane map")
     assert lanes["finding"] == "doubtful" and words in lanes["words"]
     assert all(0 < point["ber"] < 0.02 for point in told.result["points"])
+
+
+def test_unopened_bench_is_made_dark(night: Any, lab: Any) -> None:
+    """One address is dead, so nothing is measured; what a previous user left on is turned off all the same."""
+
+    with socket.socket() as nobody:
+        nobody.bind(("127.0.0.1", 0))
+
+        def left_on(running: RunningSimulation) -> None:
+            say(running, "attenuator", "INP:ATT 5")
+            say(running, "signal_laser", "POW 10 DBM", "OUTP ON")
+            running.resources["receiver"]["socket"] = f"TCPIP::127.0.0.1::{nobody.getsockname()[1]}::SOCKET"
+
+        told = night(lab.copy("power", "sequences", LIGHT_ONLY, of="power_log"), arrange=left_on)
+    assert told.result["state"] == "gave up" and "receiver" in told.result["reason"]
+    assert not told.of(Applied)
+    assert all_dark(told)

@@ -46,7 +46,7 @@ def page(facts: Facts, before: Facts | None) -> str:
 
 def _header(facts: Facts) -> Markup:
     mark = (
-        element("p", "simulated: not a measurement of hardware", class_="simulated") if facts.plan.simulated else None
+        element("p", "simulated: not a measurement of hardware", class_="simulated") if facts.header.simulated else None
     )
     about = f"run {facts.header.run_id[:8]}, begun {moment(facts.header.started_utc)}"
     return element("header", element("h1", facts.plan.name), mark, element("p", about))

@@ -22,7 +22,7 @@ def write_curve(reader: Reader, run_id: str, path: Path) -> Path:
     if figure is None:
         raise InputError(f"Run {run_id[:8]} has no point with counted bits, so there is no curve to draw.")
     words = f"{facts.plan.name}, run {run_id[:8]}"
-    if facts.plan.simulated:
+    if facts.header.simulated:
         words += " - simulated, not a measurement of hardware"
     style = resources.files("owlight.report").joinpath("page.css").read_text("utf-8") + _BACKGROUND
     height = WIDE.height + _MARGIN

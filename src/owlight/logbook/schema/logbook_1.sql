@@ -178,7 +178,8 @@ CREATE VIEW ber_curve AS                    -- errors and bits are summed, never
   FROM stay WHERE outcome = 'ok' AND NOT reference AND bits > 0
   GROUP BY run, curve, point ORDER BY run, curve, received_power_dbm;
 CREATE VIEW run_state AS                    -- '' while the last segment has no end: measuring, or broken off
-  SELECT r.run, r.name, r.simulated, s.pid, r.started_utc, coalesce(s.ended_utc, '') AS ended_utc,
+  SELECT r.run, r.name,                     -- also one whose bench file gives plain addresses of simulated instruments
+    r.simulated OR EXISTS (SELECT 1 FROM identity i WHERE i.run = r.run AND i.maker = 'Simulated') AS simulated, s.pid, r.started_utc, coalesce(s.ended_utc, '') AS ended_utc,
     coalesce(s.state, '') AS state, coalesce(s.end_reason, '') AS end_reason, r.planned_stays,
     (SELECT count(*) FROM attempt a WHERE a.run = r.run AND a.outcome = 'ok') AS stays_done,
     (SELECT count(*) FROM attempt a WHERE a.run = r.run AND a.outcome = 'failed') AS stays_failed,
