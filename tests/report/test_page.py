@@ -83,7 +83,7 @@ def test_number_is_the_stored_one(facts: Facts) -> None:
 
 def test_simulation_is_marked(facts: Facts) -> None:
     assert "not a measurement of hardware" in words_of(page(facts, None))
-    real = replace(facts, plan=replace(facts.plan, simulated=False))
+    real = replace(facts, header=replace(facts.header, simulated=False))
     assert "not a measurement of hardware" not in words_of(page(real, None))
 
 
@@ -123,7 +123,64 @@ def test_unconfirmed_safe_state_is_said(facts: Facts) -> None:
     steps = (SafeStepOutcome("signal_laser", "output off", "1", False),)
     words = words_of(page(replace(facts, safe_state=SafeState(Stamp("", 0.0, 1), False, steps)), None))
     assert "Not confirmed." in words and "Treat the light as on" in words
-    assert "Unknown." in words_of(page(replace(facts, safe_state=None), None))
+    assert "Unknown: no safe state was recorded." in words_of(page(replace(facts, safe_state=None), None))
+
+
+def test_unopened_bench_is_not_called_dark(facts: Facts) -> None:
+    """Nobody asked it: the light may be on, and the command that asks is given with the bench as it was named."""
+    by = {**facts.written_by, "command_line": "owlight run power_log --bench 'my lab/bench.toml'"}
+    header = replace(facts.header, state="gave up", reason="the laser does not answer")
+    gave_up = replace(facts, safe_state=None, identities=(), header=header, written_by=by)
+    words = words_of(page(gave_up, None))
+    assert "Nothing was switched on" not in words and "Unknown: no safe state was recorded." in words
+    assert "No instrument was opened by this run." in words and "owlight safe --bench 'my lab/bench.toml'" in words
+    assert "owlight safe --bench bench" in words_of(page(replace(facts, safe_state=None), None))
+    darkened = SafeState(Stamp("", 0.0, 1), True, (SafeStepOutcome("signal_laser", "output off", "0", True),))
+    assert "Yes, confirmed by read-back." in words_of(page(replace(gave_up, safe_state=darkened), None))
+
+
+@pytest.mark.parametrize("answered", [0, 5])
+def test_too_little_measured_is_not_praised(facts: Facts, answered: int) -> None:
+    """Silence of questions that nobody could answer speaks for nothing, with a sensitivity or without one."""
+    c = facts.conclusion
+    assert c is not None
+    checks = tuple(
+        Check(f"question {i}", "run", None, None, "ok" if i < answered else "not evaluated", "-") for i in range(31)
+    )
+    for found in (replace(c, checks=checks), replace(c, checks=checks, sensitivities=(), penalties=())):
+        words = words_of(page(replace(facts, conclusion=found), None))
+        assert "Nothing speaks against it" not in words
+        assert f"Not enough was measured to say: {answered} of 31 questions answered." in words
+    all_ok = tuple(replace(check, finding="ok") for check in checks)
+    assert "Nothing speaks against it" in words_of(page(replace(facts, conclusion=replace(c, checks=all_ok)), None))
+    nothing = replace(c, checks=all_ok, sensitivities=(), penalties=())
+    assert "Not enough was measured to say: 31 of" in words_of(page(replace(facts, conclusion=nothing), None))
+
+
+def test_simulated_times_are_told_apart(facts: Facts) -> None:
+    """Stamps of a stepped bench lie ahead of the computer's clock."""
+    assert words_of(page(facts, None)).count("UTC (simulated bench time)") == 1  # the safe state's
+    assert " min (simulated bench time)" in words_of(page(facts, None))
+    real = replace(facts, plan=replace(facts.plan, simulated=False))
+    assert "simulated bench time" not in words_of(page(real, None))
+
+
+def test_better_than_the_reference_is_below(facts: Facts) -> None:
+    c = facts.conclusion
+    assert c is not None
+    better = replace(c, penalties=(replace(c.penalties[0], penalty_db=-0.3),))
+    words = words_of(page(replace(facts, conclusion=better), None))
+    assert words.count("0.30 dB below the shot-noise limit") == 2 and "−0.30" not in words
+
+
+def test_small_repeatability_is_not_zero(facts: Facts) -> None:
+    c = facts.conclusion
+    assert c is not None
+    points = (replace(c.points[0], received_power_u_db=4e-6), replace(c.points[1], received_power_u_db=0.0))
+    text = page(replace(facts, conclusion=replace(c, points=(*points, *c.points[2:]))), None)
+    cells = re.findall(r'data-head="repeatability / dB">([^<]*)<', text)
+    assert cells[:2] == ["4×10⁻⁶", ""] and all(float(cell) > 0 for cell in cells[2:])
+    assert "0.0000" not in words_of(text)
 
 
 def test_doubt_and_failure_are_shown(facts: Facts) -> None:

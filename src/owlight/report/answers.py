@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 import os
 import re
@@ -12,7 +13,7 @@ from dataclasses import dataclass
 from owlight.report import differences
 from owlight.report.facts import Facts
 from owlight.report.markup import Inside, Markup, element, together
-from owlight.report.wording import begun, counted, level, moment, number, period, ratio, span
+from owlight.report.wording import begun, beside, counted, level, moment, number, period, ratio, span
 from owlight.vocabulary.events import Check
 from owlight.vocabulary.result import Sensitivity
 from owlight.vocabulary.terms import RECEIVED_POWER
@@ -44,7 +45,14 @@ def finished(facts: Facts) -> Answer:
     faults = f"{counted(h.stays_failed, 'stay')} failed, {counted(h.faults, 'fault')} noted"
     faults += f", {span(lost_s)} lost to them" if lost_s else ""
     reason = (begun(h.reason.rstrip(".")) + ".",) if h.reason and h.state != "finished" else ()
-    return Answer("Did it finish?", words[h.state], (*reason, done, faults, period(h.started_utc, h.ended_utc)))
+    return Answer(
+        "Did it finish?", words[h.state], (*reason, done, faults, period(h.started_utc, h.ended_utc) + clock(facts))
+    )
+
+
+def clock(facts: Facts) -> str:
+    """Beside a time of day: a simulated bench's waits pass at once, so its stamps run ahead of the computer's clock."""
+    return " (simulated bench time)" if facts.plan.simulated else ""
 
 
 def safe(facts: Facts) -> Answer:
@@ -52,17 +60,24 @@ def safe(facts: Facts) -> Answer:
     state = facts.safe_state
     if state is None and facts.header.state == "measuring":
         return Answer(question, "No: light may be on, a run is measuring.")
-    if state is None and facts.header.state == "gave up" and not facts.identities:
-        return Answer(question, "Nothing was switched on.", ("No instrument was opened.",))
     if state is None:
-        details = ("No safe state was recorded: treat the light as on and look at the bench.", *_guard(facts))
-        return Answer(question, "Unknown.", details)
+        opened = () if facts.identities else ("No instrument was opened by this run.",)
+        details = (*opened, "Treat the light as on: look at the bench, or make it safe:", *_guard(facts))
+        return Answer(question, "Unknown: no safe state was recorded.", details, _make_safe(facts))
     open_steps = tuple(step for step in state.steps if not step.confirmed)
     if open_steps or not state.confirmed:
         lines = tuple(f"{s.role}: {s.words}, read back {s.read_back or 'nothing'}" for s in open_steps)
-        return Answer(question, "Not confirmed.", ("Treat the light as on. Unconfirmed:", *lines))
+        return Answer(question, "Not confirmed.", ("Treat the light as on. Unconfirmed:", *lines), _make_safe(facts))
     lines = tuple(f"{step.role}: {step.words}" for step in state.steps)
-    return Answer(question, "Yes, confirmed by read-back.", (*lines, moment(state.at.utc)))
+    return Answer(question, "Yes, confirmed by read-back.", (*lines, moment(state.at.utc) + clock(facts)))
+
+
+def _make_safe(facts: Facts) -> str:
+    """With the bench as it was named then; `demo` names none, and its bench is found by the stored name."""
+    words = shlex.split(facts.written_by["command_line"].replace("--bench=", "--bench "))
+    named = [word for option, word in itertools.pairwise(words) if option == "--bench"]
+    named += [source.name for source in facts.sources if source.kind == "bench"]
+    return f"{program()} safe --bench {shlex.quote(named[0]) if named else 'BENCH'}"
 
 
 def _guard(facts: Facts) -> tuple[str, ...]:
@@ -117,14 +132,17 @@ def _definition(facts: Facts) -> tuple[str, ...]:
 def _penalty(facts: Facts) -> tuple[str, ...]:
     """The first reference only, its name without what stands in brackets; the rest is below the curve."""
     found = facts.conclusion.penalties if facts.conclusion else ()
-    return tuple(f"{number(p.penalty_db, 2)} dB above {p.reference.split(' (')[0]}" for p in found[:1])
+    return tuple(f"{beside(p.penalty_db)} {p.reference.split(' (')[0]}" for p in found[:1])
 
 
 def believe(facts: Facts) -> Answer:
     question, found = "Can I believe it?", Counter(check.finding for check in facts.checks)
     if not facts.checks:
-        return Answer(question, "Nothing was asked yet.")
+        return Answer(question, _unasked(facts))
     headline = "Nothing speaks against it." if not found["doubtful"] + found["bad"] else _against(found)
+    if not facts.sensitivities or 2 * found["not evaluated"] > len(facts.checks):
+        asked = counted(len(facts.checks), "question")
+        headline = f"Not enough was measured to say: {len(facts.checks) - found['not evaluated']} of {asked} answered."
     against = [check for check in facts.checks if check.finding in {"bad", "doubtful"}]
     against.sort(key=lambda check: check.finding)
     lines = [together(element("b", c.finding), f" {c.name}, {c.subject}: {c.words}") for c in against[:_MOST_SHOWN]]
@@ -134,6 +152,17 @@ def believe(facts: Facts) -> Answer:
         f"{found['ok']} ok, {found['doubtful']} doubtful, {found['bad']} bad, {found['not evaluated']} not evaluated"
     )
     return Answer(question, headline, (*lines, tally, *_fit(facts)))
+
+
+def _unasked(facts: Facts) -> str:
+    """Why nothing was asked."""
+    if facts.conclusion is None:
+        return (
+            "Nothing was asked yet."
+            if facts.header.state == "measuring"
+            else "Nothing was asked: it has no conclusion."
+        )
+    return "Nothing is asked of readings alone."
 
 
 def _against(found: Counter[str]) -> str:

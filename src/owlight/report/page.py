@@ -17,6 +17,10 @@ from owlight.report.tributary_figure import tributary_figure
 from owlight.report.wording import moment
 
 _HALF = Size(520, 380, 56, "wide")
+_POINTS = (
+    "Repeatability is how well the tap's own readings repeat, as a standard uncertainty of the point's power; "
+    "what the whole power axis may err by stands in the budget."
+)
 
 
 def write_report(reader: Reader, run_id: str, folder: Path) -> Path:
@@ -66,7 +70,7 @@ def _sections(facts: Facts) -> list[Markup]:
     found = [
         _section("The curve", *_curve(facts)),
         _section("Findings", tables.findings(facts) if facts.checks else element("p", "Nothing was asked yet.")),
-        _section("Points", tables.points(facts)),
+        _section("Points", tables.points(facts), element("p", _POINTS)),
         _section("Uncertainty", tables.budget(facts), element("p", tables.calibration(facts))),
         _section("Instruments", tables.instruments(facts)),
         _section("To repeat it", tables.repeat(facts)),

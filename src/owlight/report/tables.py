@@ -8,7 +8,7 @@ import shlex
 from owlight.report.answers import coverage_factor, finding_word, program
 from owlight.report.facts import Facts
 from owlight.report.markup import Inside, Markup, element, table, together
-from owlight.report.wording import NOT_ASSESSED, count, counted, figure, level, number, ratio, ratio_span
+from owlight.report.wording import NOT_ASSESSED, beside, count, counted, figure, level, number, ratio, ratio_span
 from owlight.vocabulary.events import Check
 from owlight.vocabulary.result import CurvePoint
 
@@ -60,7 +60,17 @@ def points(facts: Facts) -> Markup | None:
     if not found:
         return None
     several = len({point.group for point in found}) > 1
-    heads = ("received power / dBm", "u / dB", "errors", "bits", "BER", "95 % interval", "stays", "locked", "remarks")
+    heads = (
+        "received power / dBm",
+        "repeatability / dB",
+        "errors",
+        "bits",
+        "BER",
+        "95 % interval",
+        "stays",
+        "locked",
+        "remarks",
+    )
     rows: list[tuple[Inside, ...]] = []
     for point in found:
         row = _point(point)
@@ -79,7 +89,11 @@ def _point(point: CurvePoint) -> tuple[Inside, ...]:
         interval, ber = ratio_span(point.ber_low, point.ber_high), ratio(point.ber, fixed=True)
     remarks = [*point.findings, *([] if point.fitted or "; ".join(point.findings) else ["not fitted"])]
     locked = f"{point.captures_locked} of {point.captures_total}"
-    power, u = number(point.received_power_dbm, 3), number(point.received_power_u_db, 4)
+    # a single reading tells nothing of its scatter, and 0 would claim that there is none
+    power, u = (
+        number(point.received_power_dbm, 3),
+        figure(point.received_power_u_db) if point.received_power_u_db else "",
+    )
     return (
         power,
         u,
@@ -148,7 +162,7 @@ def budget(facts: Facts) -> Markup | None:
 def penalties(facts: Facts) -> Markup | None:
     found = facts.conclusion.penalties if facts.conclusion else ()
     lines = [
-        f"{p.group + ': ' if p.group else ''}{number(p.penalty_db, 2)} dB above {p.reference}, {level(p.reference_dbm)}"
+        f"{p.group + ': ' if p.group else ''}{beside(p.penalty_db)} {p.reference}, {level(p.reference_dbm)}"
         for p in found
     ]
     return element("ul", *(element("li", line) for line in lines), class_="penalties") if lines else None
