@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import json
+import subprocess
+import sys
 from pathlib import Path
 from typing import Any
 
@@ -216,6 +218,51 @@ def test_unforeseen_faults_are_two_sentences(owlight: Any, monkeypatch: pytest.M
     assert answer.status == 3 and answer.out == "" and len(answer.err.splitlines()) == 2
     assert "ZeroDivisionError" in answer.err and "Traceback" not in answer.err
     assert "in fails" in (tmp_path / "cache" / "last_fault.txt").read_text("utf-8")
+
+
+@pytest.mark.parametrize(
+    ("command", "words"),
+    [
+        (("show",), "No bench was open."),
+        (("safe", "--bench", "bench"), "may not be safe"),
+        (("run", "power_log", "--bench", "bench"), "has been made safe, and what was measured is in the logbook"),
+    ],
+    ids=lambda value: value[0] if isinstance(value, tuple) else "",
+)
+def test_unforeseen_faults_claim_what_is_true(
+    owlight: Any, monkeypatch: pytest.MonkeyPatch, tmp_path: Path, command: tuple[str, ...], words: str
+) -> None:
+    def fails(*arguments: object, **more: object) -> None:
+        raise ZeroDivisionError("division by zero")
+
+    for place in ("jobs.summary.summary", "jobs.safe.make_safe", "jobs.night.measure"):
+        monkeypatch.setattr(f"owlight.{place}", fails)
+    monkeypatch.setattr(shipped, "user_cache", lambda: tmp_path / "cache")
+    answer = owlight(*command)
+    assert answer.status == 3 and words in answer.err
+    assert command[0] == "run" or "has been made safe" not in answer.err
+
+
+@pytest.mark.skipif(not Path("/dev/full").exists(), reason="needs a device that is always full")
+@pytest.mark.parametrize("runs", [1, 2000], ids=["at the end", "while printing"])
+def test_full_output_is_storage(runs: int) -> None:
+    """Whether the words fit the buffer, and fail when it is emptied, or not."""
+    code = "import owlight.jobs.listing as l, owlight.cli as c\n"
+    code += "one = dict(run_id='12345678', started_utc='2026', state='finished', name='n', simulated=True)\n"
+    code += f"l.listing = lambda folder: [one] * {runs}\nc.main()"
+    with open("/dev/full", "w") as full:
+        found = subprocess.run(
+            [sys.executable, "-c", code, "logbook"], stdout=full, stderr=subprocess.PIPE, text=True, check=False
+        )
+    assert found.returncode == STORAGE
+    assert found.stderr.count("The output could not be written (No space left on device)") == 1
+    assert len(found.stderr.splitlines()) == 1
+
+
+def test_usage_names_how_it_was_started(owlight: Any, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setenv("OWLIGHT_STARTED_AS", "python3 here/src")
+    assert "Usage: python3 here/src run [OPTIONS]" in owlight("run", "--help").out
+    assert "Try 'python3 here/src run --help'" in owlight("run").err
 
 
 def test_interrupted_command_has_its_status(owlight: Any, monkeypatch: pytest.MonkeyPatch) -> None:

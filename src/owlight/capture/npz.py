@@ -23,7 +23,8 @@ _PILED_UP = 3.0
 def read_npz(file: Path, lanes: tuple[str, ...], sample_rate_hz: float) -> Capture:
     """The capture in `codes` (lanes x samples, integers of 8 to 16 bits), its lanes named in their order.
 
-    `volts_per_code` (one, or one a lane) may stand beside it; without it the lanes are not `in_volts`. InputError says what is wrong and what to give.
+    `volts_per_code` (one, or one a lane) may stand beside it; without it the lanes are not `in_volts`. InputError says
+    what is wrong and what to give.
     """
     codes, volts_per_code = _arrays(file)
     wanted = f"Give `codes` as lanes x samples of integers, with {len(lanes)} lanes ({', '.join(lanes)})."

@@ -7,19 +7,31 @@ import sys
 
 _UNFORESEEN = 3
 _STOPPED = 130
+_NO_BENCH = "No bench was open."
+_WHAT_IS_SAFE = dict.fromkeys(("forecast", "show", "report", "logbook", "demodulate"), _NO_BENCH) | {
+    "safe": "The bench may not be safe: look at it.",
+    "identify": "Nothing was set on the bench.",
+    "simulate": "No hardware is concerned.",
+}
+_MEASURED = "A bench that was open has been made safe, and what was measured is in the logbook."
 
 
 def main() -> None:
     """The console script: every error becomes words on stderr and an exit status; nobody is shown a traceback."""
     status = _status()
     try:
-        sys.stdout.flush()
+        _flush()
     except BrokenPipeError:
         _reader_left()
     except OSError as trouble:
-        status = status or _told(trouble)
-        _reader_left()
+        told = _unwritable(trouble)
+        status = status or told
     raise SystemExit(status)
+
+
+def _flush() -> None:
+    if sys.stdout is not None:  # it is where a shell closed it: `>&-`
+        sys.stdout.flush()
 
 
 def _status() -> int:
@@ -27,8 +39,9 @@ def _status() -> int:
 
     try:
         from owlight.cli.app import app
+        from owlight.cli.options import program
 
-        app(standalone_mode=True)
+        app(standalone_mode=True, prog_name=program())
     except SystemExit as end:
         if type(sys.stdout).__name__ == "PacifyFlushWrapper":  # how typer marks that the reader of our output left
             return 0
@@ -41,8 +54,28 @@ def _status() -> int:
     except BrokenPipeError:
         _reader_left()
     except Exception as trouble:
-        return _told(trouble)
+        return _unwritable(trouble) if isinstance(trouble, OSError) and _while_printing(trouble) else _told(trouble)
     return 0
+
+
+def _while_printing(trouble: BaseException) -> bool:
+    """Raised in this package or its parser of arguments, which do nothing but print."""
+    last = trouble.__traceback__
+    while last is not None and last.tb_next is not None:
+        last = last.tb_next
+    return last is not None and last.tb_frame.f_globals["__name__"].startswith(("owlight.cli", "typer"))
+
+
+def _unwritable(trouble: OSError) -> int:
+    from owlight.errors import StorageError
+
+    _reader_left()
+    print(
+        f"owlight: The output could not be written ({trouble.strerror or trouble}). "
+        "Make room where it goes, or send it elsewhere, and ask again.",
+        file=sys.stderr,
+    )
+    return StorageError.exit_status
 
 
 def _reader_left() -> None:
@@ -64,9 +97,10 @@ def _told(trouble: Exception) -> int:
         place = str(kept)
     except OSError:
         pass
+    command = next((word for word in sys.argv[1:] if not word.startswith("-")), "")
     print(
-        f"owlight: {type(trouble).__name__}: {trouble}. Nobody foresaw this; a bench that was open has been made safe "
-        f"and what was measured is in the logbook.\nThe details are in {place}; please report them.",
+        f"owlight: {type(trouble).__name__}: {trouble}. Nobody foresaw this. {_WHAT_IS_SAFE.get(command, _MEASURED)}\n"
+        f"The details are in {place}; please report them.",
         file=sys.stderr,
     )
     return _UNFORESEEN

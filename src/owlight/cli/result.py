@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-import os
 import shutil
 import textwrap
 from pathlib import Path
 from typing import Any
 
 from owlight.cli.drawing import draw_curve
+from owlight.cli.options import program
 from owlight.jobs.fitted import fitted_ber
 
 Json = dict[str, Any]
@@ -108,11 +108,6 @@ def _print_next(found: Json, bench: str | None) -> None:
         print(f"  {program()} report {run} --logbook {folder}")
     else:
         print(f"  {program()} forecast lo_power_map --bench {bench}")
-
-
-def program() -> str:
-    """How this program was started, so that the commands shown can be pasted."""
-    return os.environ.get("OWLIGHT_STARTED_AS", "owlight")
 
 
 def _quoted(path: Path) -> str:

@@ -51,9 +51,7 @@ def demodulate_file(file: Path, asked: FileSignal) -> dict[str, Any]:
     bad = [check for check in check_capture(capture, frozenset(), 1) if check.finding == "bad"]
     if bad:
         words = f"{file} cannot be demodulated: {'; '.join(check.words for check in bad)}"
-        raise InputError(
-            f"{words}. Record again: every lane connected, within the converter's range, all equally long."
-        )
+        raise InputError(f"{words}. Record again: every lane connected, within the converter's range, of one length.")
     name = "dual polarisation" if asked.polarisations == 2 else "single polarisation"
     chain = make_chain(name, signal, tuple(LaneBelief(lane, 0.0, False) for lane in lanes), None)
     return as_json(demodulate(capture, Chain.from_text(chain.text), labels))

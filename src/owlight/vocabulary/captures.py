@@ -24,7 +24,7 @@ class CaptureId:
 class Lane:
     """One lane, `XI`, `XQ`, `YI`, `YQ` (or `I`, `Q`): volts = codes * volts_per_code + offset_v.
 
-    Without `in_volts` nobody told the scale: what stands for volts is then codes. Compare `sha256` (of the little-endian
+    Without `in_volts` nobody told the scale, and what stands for volts is codes. Compare `sha256` (of the little-endian
     code bytes), never the arrays.
     """
 

@@ -21,8 +21,8 @@ Figures = dict[str, float]
 def scale(lanes: Sequence[Lane], inverted: Sequence[bool], remove_mean: bool = True) -> tuple[Complex, Figures]:
     """Codes to volts, lanes to polarisations: (polarisations, samples) complex64 from lanes in the order I, Q, I, Q.
 
-    An inverted lane changes its sign. Figures: mean and rms in volts (or codes, as their names say) and clipped fraction,
-    of each lane.
+    An inverted lane changes its sign. Figures of each lane: mean and rms in volts (or codes, as their names say), and
+    clipped fraction.
 
     >>> lanes = [Lane(name, np.array([1, 3], np.int8), 0.5, 0.0, 0.0, "") for name in "IQ"]
     >>> scale(lanes, [False, True])[0].tolist()
