@@ -12,10 +12,11 @@ from owlight.jobs.bench_session import simulated_resources
 from owlight.jobs.planning import plan_of
 from owlight.jobs.reproduce import unpack
 from owlight.jobs.resolve import Resolved, resolve
-from owlight.jobs.summary import _stays
+from owlight.jobs.summary import _readings, _stays
 from owlight.vocabulary.events import AttemptFinished
 from owlight.vocabulary.plan import Attempt, Plan
-from owlight.vocabulary.values import Stamp
+from owlight.vocabulary.terms import RECEIVED_POWER
+from owlight.vocabulary.values import Reading, Stamp, Term
 
 
 @pytest.fixture(scope="module")
@@ -34,6 +35,30 @@ def test_points_without_ok_stay_are_missing(resolved: Resolved) -> None:
     measured = [stay(plan, index, "ok") for index in range(len(plan.points)) if index not in (3, 5)]
     told = _stays(plan, (*measured, stay(plan, 3, "failed"), stay(plan, 0, "failed")), 31)
     assert told == {"stays_planned": 31, "stays_done": len(measured), "stays_failed": 2, "missing": [3, 5]}
+
+
+def test_readings_are_told_a_stay(resolved: Resolved) -> None:
+    """Mean and deviation of before and after, with units; a failed stay and one that read nothing give none."""
+    plan = plan_of(resolved)
+    at, meter = Stamp("2026-01-01T00:00:00Z", 0.0, 1), Term("power_meter", "power")
+    read = (Reading(at, meter, 2e-6, None, 1, "before"), Reading(at, meter, 4e-6, None, 1, "after"))
+    told = _readings(
+        (
+            replace(stay(plan, 3, "ok"), readings=read),
+            replace(stay(plan, 4, "failed"), readings=read),
+            stay(plan, 5, "ok"),
+        )
+    )
+    power_dbm = plan.points[3].value(RECEIVED_POWER)
+    assert told == [
+        {
+            "point": 3,
+            "attempt": 1,
+            "settings": [{"term": "received_power", "value": power_dbm, "unit": "dBm"}],
+            # 1e-6 off the mean on either side: the square root of 2 in 1e-6
+            "readings": [{"term": "power_meter.power", "value": 3e-6, "unit": "W", "sd": pytest.approx(2**0.5 * 1e-6)}],
+        }
+    ]
 
 
 def test_every_source_is_unpacked_as_it_was(resolved: Resolved, tmp_path: Path) -> None:

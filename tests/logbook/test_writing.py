@@ -62,6 +62,28 @@ def test_curve_view_pools_counts(told: Told) -> None:
         assert ber == pytest.approx(errors / bits, rel=1e-15)
 
 
+def test_readings_view_knows_the_settings(tmp_path: Path, plan: Plan, story: Any, provenance: Any) -> None:
+    """Each reading at its own stay, also while the stay before it still waits for its demodulation."""
+    with Logbook.open(tmp_path) as logbook:
+        writer = logbook.start_run(plan, provenance)
+        for point in (0, 1):
+            writer.record(story.capture(point, 1))
+        stays = [story.stay(plan, point, 1, errors=5) for point in (0, 1)]
+        # the first ends after the second has begun and read
+        late = (replace(stays[0], at=story.stamp()), replace(stays[1], at=story.stamp()))
+        for reading in (*stays[0].readings, *stays[1].readings):
+            writer.record(reading)
+        for stay in late:
+            writer.record(stay)
+        writer.close()
+    connection = sqlite3.connect(tmp_path / "logbook.db")
+    rows = connection.execute("SELECT point, requested_dbm, role, name, value, unit FROM stay_reading").fetchall()
+    connection.close()
+    assert rows == [
+        (i, p, "power_meter", "power", stays[i].readings[0].value, "W") for i, p in ((0, -39.0), (1, -38.0))
+    ]
+
+
 def test_sqlite_utils_command_prints_curve(told: Told) -> None:
     query = f"select received_power_dbm, errors, bits, ber from ber_curve where run = '{told[1]}'"
     command = [sys.executable, "-m", "sqlite_utils", str(told[0] / "logbook.db"), query]

@@ -14,12 +14,14 @@ from owlight.logbook.read import open_reader
 from owlight.report import write_report
 from owlight.report.facts import Facts, gather, gather_earlier
 from owlight.report.page import page
-from owlight.vocabulary.events import Check, SafeState, SafeStepOutcome
+from owlight.vocabulary.events import AttemptFinished, Check, SafeState, SafeStepOutcome
+from owlight.vocabulary.plan import Attempt, Point
 from owlight.vocabulary.result import Conclusion
-from owlight.vocabulary.values import Stamp
+from owlight.vocabulary.values import Reading, Setting, Stamp, Term
 
 QUESTIONS = ["Did it finish?", "Is the bench safe?", "What is the number?", "Can I believe it?", "What to redo?"]
 QUESTIONS.append("What differs from last time?")
+SWEPT_AND_READ = ("attenuator.attenuation", "power_meter.power", "signal_laser.power")
 
 
 @pytest.fixture(scope="module")
@@ -239,6 +241,45 @@ def test_several_curves_are_told_apart(facts: Facts) -> None:
     both = replace(c, points=(*c.points, *second), sensitivities=(*c.sensitivities, s))
     text = page(replace(facts, conclusion=both), None)
     assert "curve1" in re.findall(r"<svg.*?</svg>", text)[0] and "2 sensitivities." in words_of(text)
+
+
+@pytest.fixture
+def readings_alone(facts: Facts) -> Facts:
+    """A finished run without captures: two points, two stays each, and a third stay that failed."""
+    attenuation, meter, laser = (Term(*name.split(".")) for name in SWEPT_AND_READ)
+    points = tuple(Point(i, (Setting(attenuation, 15.0 + i),)) for i in range(2))
+    at = Stamp("2026-12-01T20:00:00.000000Z", 0.0, 1)
+
+    def stay(index: int, number: int, power_w: float, outcome: str = "ok") -> AttemptFinished:
+        read = (*(Reading(at, meter, power_w + off_w) for off_w in (-1e-8, 1e-8)), Reading(at, laser, 10.0))
+        attempt = Attempt(points[index], number, 0, "pass", 0.0)
+        return AttemptFinished(at, attempt, outcome, "", at, 1.0, None, read, (), (), ())
+
+    history = (stay(0, 1, 12e-6), stay(1, 1, 9e-6), stay(1, 2, 9.2e-6), stay(0, 2, 12e-6), stay(0, 3, 5e-3, "failed"))
+    plan = replace(facts.plan, points=points, capture=None, measurand=None, signal=None)
+    header = replace(facts.header, state="finished", stays_failed=1)
+    told = Conclusion((), (), (), (), (), "The sequence takes no captures: settings and readings are logged.")
+    return replace(facts, header=header, plan=plan, conclusion=told, stays=(), history=history)
+
+
+def test_readings_alone_are_the_result(readings_alone: Facts) -> None:
+    text = page(readings_alone, None)
+    section = re.findall(r"<h2>Readings</h2>(.*?)</section>", text, re.DOTALL)[0]
+    rows = [re.findall(r"<td[^>]*>([^<]*)</td>", row) for row in re.findall(r"<tr>(.*?)</tr>", section)][1:]
+    # deviations: of 12 -+ 0.01 twice, of 9 -+ 0.01 and 9.2 -+ 0.01 microwatts, by numpy.std(ddof=1)
+    assert rows[0] == ["15 dB", "", "2", "12 µW", "11.5 nW", "10 dBm", "0 dB"]
+    assert rows[1] == ["16 dB", "", "2", "9.1 µW", "116 nW", "10 dBm", "0 dB"]
+    words = words_of(text)
+    assert words.index("Readings") < words.index("Findings") and "The curve" not in words
+    assert "readings were asked for" in words and "power_meter.power, signal_laser.power at 2 points" in words
+    assert "asked yet" not in words and words.count("Nothing is asked of readings alone.") == 2
+    assert "from stay_reading where run" in words and "ber_curve" not in words
+
+
+def test_readings_beside_a_curve_come_later(facts: Facts, readings_alone: Facts) -> None:
+    both = replace(facts, plan=replace(facts.plan, points=readings_alone.plan.points), history=readings_alone.history)
+    words = words_of(page(both, None))
+    assert words.index("The curve") < words.index("Points") < words.index("Readings") and "ber_curve" in words
 
 
 def _luminance(colour: str) -> float:

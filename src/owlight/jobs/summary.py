@@ -9,10 +9,12 @@ from typing import Any
 
 from owlight.logbook.read import curve, history, open_reader, provenance, runs
 from owlight.logbook.read.reader import Reader
-from owlight.statistics import pool
+from owlight.statistics import mean_readings, pool
 from owlight.vocabulary.events import History
 from owlight.vocabulary.plan import Plan
 from owlight.vocabulary.result import Conclusion, CurvePoint, Sensitivity, Stay
+from owlight.vocabulary.terms import TERMS
+from owlight.vocabulary.values import Term
 
 Json = dict[str, Any]
 
@@ -23,6 +25,7 @@ def summary(folder: Path, run_text: str = "last") -> Json:
         run_id = runs.find_run(reader, run_text)
         header = runs.header(reader, run_id)
         plan = provenance.plan(reader, run_id)
+        finished = history.history(reader, run_id)
         conclusion = curve.conclusion(reader, run_id) or _so_far(plan, curve.stays(reader, run_id), header.state)
         return {
             "run_id": run_id,
@@ -35,9 +38,11 @@ def summary(folder: Path, run_text: str = "last") -> Json:
             "seed": plan.seed,
             "started_utc": header.started_utc,
             "ended_utc": header.ended_utc,
-            **_stays(plan, history.history(reader, run_id), header.planned_stays),
+            "simulated_time": plan.simulated,
+            **_stays(plan, finished, header.planned_stays),
             **_measurand(plan),
             **_results(conclusion),
+            "readings": _readings(finished),
             "safe_state": _safe_state(runs.safe_state(reader, run_id)) or _by_the_guard(folder, reader, header),
         }
 
@@ -51,6 +56,30 @@ def _stays(plan: Plan, finished: History, planned: int) -> Json:
         "stays_failed": sum(stay.outcome != "ok" for stay in finished),
         "missing": sorted({index for indices in plan.order for index in indices} - measured),
     }
+
+
+def _readings(finished: History) -> list[Json]:
+    """What each stay read, the mean of its readings before and after; a failed stay gives none."""
+    return [
+        {
+            "point": stay.attempt.point.index,
+            "attempt": stay.attempt.number,
+            "settings": [
+                {"term": str(setting.term), "value": setting.value, "unit": _unit(setting.term)}
+                for setting in stay.attempt.point.settings
+            ],
+            "readings": [
+                {"term": str(r.term), "value": r.value, "unit": _unit(r.term), "sd": r.standard_deviation}
+                for r in mean_readings(stay.readings)
+            ],
+        }
+        for stay in finished
+        if stay.outcome == "ok" and stay.readings
+    ]
+
+
+def _unit(term: Term) -> str:
+    return TERMS[term].unit if term in TERMS else ""
 
 
 def _so_far(plan: Plan, stays: tuple[Stay, ...], state: str) -> Conclusion:

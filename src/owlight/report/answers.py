@@ -87,6 +87,8 @@ def _guard(facts: Facts) -> tuple[str, ...]:
 
 def the_number(facts: Facts) -> Answer:
     question, m = "What is the number?", facts.plan.measurand
+    if facts.plan.capture is None:
+        return Answer(question, "There is none: readings were asked for.", _readings(facts))
     if not facts.sensitivities or m is None:
         words = facts.conclusion.words if facts.conclusion else "The run has no conclusion yet."
         return Answer(question, "There is none.", (words or "The sequence states no measurand.",))
@@ -97,6 +99,16 @@ def the_number(facts: Facts) -> Answer:
     headline = element("span", level(s.received_power_dbm, decimals(s)), class_="result")
     mark = ("Extrapolated: the threshold lies outside the measured points.",) if s.extrapolated else ()
     return Answer(question, headline, (*mark, *intervals(s), *_definition(facts), *_penalty(facts)))
+
+
+def _readings(facts: Facts) -> tuple[str, ...]:
+    well = [stay for stay in facts.history if stay.outcome == "ok"]
+    terms = tuple(dict.fromkeys(str(reading.term) for stay in well for reading in stay.readings))
+    if not terms:
+        return ("No stay gave a reading.",)
+    return (
+        f"{', '.join(terms)} at {counted(len({s.attempt.point.index for s in well}), 'point')}, in the table below",
+    )
 
 
 def _one_of_several(s: Sensitivity) -> tuple[Inside, str]:
@@ -138,7 +150,7 @@ def _penalty(facts: Facts) -> tuple[str, ...]:
 def believe(facts: Facts) -> Answer:
     question, found = "Can I believe it?", Counter(check.finding for check in facts.checks)
     if not facts.checks:
-        return Answer(question, _unasked(facts))
+        return Answer(question, unasked(facts))
     headline = "Nothing speaks against it." if not found["doubtful"] + found["bad"] else _against(found)
     if not facts.sensitivities or 2 * found["not evaluated"] > len(facts.checks):
         asked = counted(len(facts.checks), "question")
@@ -154,7 +166,7 @@ def believe(facts: Facts) -> Answer:
     return Answer(question, headline, (*lines, tally, *_fit(facts)))
 
 
-def _unasked(facts: Facts) -> str:
+def unasked(facts: Facts) -> str:
     """Why nothing was asked."""
     if facts.conclusion is None:
         return (

@@ -8,7 +8,7 @@ from pathlib import Path
 from owlight.errors import StorageError
 from owlight.logbook.read import Reader
 from owlight.report import tables
-from owlight.report.answers import Answer, answers
+from owlight.report.answers import Answer, answers, unasked
 from owlight.report.curve_figure import NARROW, WIDE, Size, curve_figure
 from owlight.report.facts import Facts, gather, gather_earlier
 from owlight.report.markup import Inside, Markup, element, listed, together
@@ -20,6 +20,10 @@ _HALF = Size(520, 380, 56, "wide")
 _POINTS = (
     "Repeatability is how well the tap's own readings repeat, as a standard uncertainty of the point's power; "
     "what the whole power axis may err by stands in the budget."
+)
+_READINGS = (
+    "Each mean is of all readings at the point, in the unit shown, and beside it their standard deviation; "
+    "every single reading is in the logbook."
 )
 
 
@@ -67,10 +71,15 @@ def _answer(answer: Answer) -> Markup:
 
 
 def _sections(facts: Facts) -> list[Markup]:
+    readings = _section("Readings", tables.readings(facts), element("p", _READINGS))
+    # without captures the readings are the result, and there is no curve to miss
+    alone = facts.plan.capture is None
     found = [
-        _section("The curve", *_curve(facts)),
-        _section("Findings", tables.findings(facts) if facts.checks else element("p", "Nothing was asked yet.")),
+        readings if alone else _section("The curve", *_curve(facts)),
+        _section("The stays", _order(facts)) if alone else None,
+        _section("Findings", tables.findings(facts) if facts.checks else element("p", unasked(facts))),
         _section("Points", tables.points(facts), element("p", _POINTS)),
+        None if alone else readings,
         _section("Uncertainty", tables.budget(facts), element("p", tables.calibration(facts))),
         _section("Instruments", tables.instruments(facts)),
         _section("To repeat it", tables.repeat(facts)),

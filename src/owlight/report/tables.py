@@ -5,12 +5,16 @@ from __future__ import annotations
 import math
 import shlex
 
+from owlight.quantity import words as quantity
 from owlight.report.answers import coverage_factor, finding_word, program
 from owlight.report.facts import Facts
 from owlight.report.markup import Inside, Markup, element, table, together
 from owlight.report.wording import NOT_ASSESSED, beside, count, counted, figure, level, number, ratio, ratio_span
+from owlight.statistics import mean_readings
 from owlight.vocabulary.events import Check
 from owlight.vocabulary.result import CurvePoint
+from owlight.vocabulary.terms import TERMS
+from owlight.vocabulary.values import Reading, Term, Value
 
 _KNOWN_BUT_NOT_IN_A_BENCH_FILE = (
     ("polarisation dependence of the tap", "the tap's split may depend on the state of polarisation"),
@@ -107,6 +111,47 @@ def _point(point: CurvePoint) -> tuple[Inside, ...]:
     )
 
 
+def readings(facts: Facts) -> Markup | None:
+    """Settings against mean readings, a row a point."""
+    well = [stay for stay in facts.history if stay.outcome == "ok" and stay.readings]
+    indices = {stay.attempt.point.index for stay in well}
+    shown = [point for point in facts.plan.points if point.index in indices]
+    swept = tuple(dict.fromkeys(setting.term for point in shown for setting in point.settings))
+    read = tuple(dict.fromkeys(reading.term for stay in well for reading in stay.readings))
+    rows: list[tuple[Inside, ...]] = []
+    for point in shown:
+        stays = [stay for stay in well if stay.attempt.point.index == point.index]
+        means = {mean.term: mean for mean in mean_readings(reading for stay in stays for reading in stay.readings)}
+        set_to = [_shown(term, point.value(term)) for term in swept]
+        figures = [cell for term in read for cell in _mean(means.get(term))]
+        rows.append((*set_to, "reference" if point.reference else "", str(len(stays)), *figures))
+    heads = (*map(str, swept), "", "stays", *(head for term in read for head in (str(term), "sd of the readings")))
+    numeric = frozenset(range(len(heads))) - {len(swept)}
+    return table(heads, rows, numeric) if rows else None
+
+
+def _mean(mean: Reading | None) -> tuple[str, str]:
+    if mean is None:
+        return "not read", ""
+    if mean.value is None:
+        return "no number", ""
+    unit = _unit(mean.term)
+    deviation = mean.standard_deviation
+    # a level scatters by a ratio
+    scatter = "" if deviation is None else quantity(deviation, "dB" if unit == "dBm" else unit, 3)
+    return _shown(mean.term, mean.value), scatter
+
+
+def _shown(term: Term, value: Value | None) -> str:
+    if isinstance(value, float):
+        return quantity(value, _unit(term)).replace("-", "−")
+    return "" if value is None else str(value)
+
+
+def _unit(term: Term) -> str:
+    return TERMS[term].unit if term in TERMS else ""
+
+
 def instruments(facts: Facts) -> Markup | None:
     if not facts.identities:
         return None
@@ -172,11 +217,14 @@ def repeat(facts: Facts) -> Markup:
     run, folder = facts.header.run_id, shlex.quote(str(facts.folder))
     by = facts.written_by
     software = ", ".join(f"{name} {version}" for name, version in facts.software.items())
-    query = f"select received_power_dbm, errors, bits, ber from ber_curve where run = '{run}'"
+    what, query = "the curve", f"select received_power_dbm, errors, bits, ber from ber_curve where run = '{run}'"
+    if facts.plan.capture is None:
+        columns = "settings, attempt, phase, role, name, value, unit"
+        what, query = "every reading", f"select {columns} from stay_reading where run = '{run}'"
     rows: list[tuple[Inside, ...]] = [
         ("run", element("code", run)),
         ("again, and compare", element("code", f"{program()} reproduce {run[:8]} --logbook {folder}")),
-        ("the curve as a table", element("code", f'sqlite3 {shlex.quote(str(facts.folder / "logbook.db"))} "{query}"')),
+        (f"{what} as a table", element("code", f'sqlite3 {shlex.quote(str(facts.folder / "logbook.db"))} "{query}"')),
         ("started as", element("code", by["command_line"])),
         ("seed", str(facts.plan.seed)),
         ("by, on", f"{by['operator']}, {by['host']}"),

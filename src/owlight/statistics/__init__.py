@@ -6,6 +6,7 @@ Pure functions of values; scipy is imported where it is used, so that a forecast
 from owlight.statistics.checks import Evidence, run_checks
 from owlight.statistics.intervals import exact_interval, upper_limit
 from owlight.statistics.pooling import groups, pool
+from owlight.statistics.readings import mean_readings
 from owlight.statistics.request import Reason, SensitivityRequest
 from owlight.statistics.sensitivity import budget, estimate
 
@@ -17,6 +18,7 @@ __all__ = [
     "estimate",
     "exact_interval",
     "groups",
+    "mean_readings",
     "pool",
     "run_checks",
     "upper_limit",

@@ -109,6 +109,7 @@ CREATE TABLE reading (
   at_utc TEXT NOT NULL, count INTEGER NOT NULL, monotonic_s REAL NOT NULL, role TEXT NOT NULL, name TEXT NOT NULL,
   unit TEXT NOT NULL, value REAL, standard_deviation REAL, readings INTEGER NOT NULL, phase TEXT NOT NULL) STRICT;
 CREATE INDEX reading_run ON reading(run, role, name);
+CREATE INDEX reading_order ON reading(run, count);
 CREATE TABLE finding (                      -- trust checks and their answers
   finding_id INTEGER PRIMARY KEY, run TEXT NOT NULL REFERENCES run ON DELETE CASCADE,
   point INTEGER, attempt INTEGER, name TEXT NOT NULL, subject TEXT NOT NULL, statistic REAL, limit_value REAL,
@@ -177,6 +178,12 @@ CREATE VIEW ber_curve AS                    -- errors and bits are summed, never
     CASE WHEN sum(errors) = 0 AND sum(bits) > 0 THEN 2.9957 / sum(bits) END AS ber_upper_limit_95
   FROM stay WHERE outcome = 'ok' AND NOT reference AND bits > 0
   GROUP BY run, curve, point ORDER BY run, curve, received_power_dbm;
+CREATE VIEW stay_reading AS                 -- what was read at which settings; stays overlap in `count`, so the stay itself says
+  SELECT a.run, a.point, p.curve AS settings, a.requested_dbm, a.attempt, r.at_utc, r.phase, r.role, r.name, r.value,
+    r.standard_deviation, r.readings, r.unit
+  FROM attempt a JOIN point p USING (run, point) JOIN json_each(a.finished_json, '$.readings') j
+    JOIN reading r ON r.run = a.run AND r.count = json_extract(j.value, '$.at.count')
+  WHERE a.outcome = 'ok' ORDER BY a.run, r.count;
 CREATE VIEW run_state AS                    -- '' while the last segment has no end: measuring, or broken off
   SELECT r.run, r.name,                     -- also one whose bench file gives plain addresses of simulated instruments
     r.simulated OR EXISTS (SELECT 1 FROM identity i WHERE i.run = r.run AND i.maker = 'Simulated') AS simulated, s.pid, r.started_utc, coalesce(s.ended_utc, '') AS ended_utc,
