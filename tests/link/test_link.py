@@ -9,10 +9,12 @@ from contextlib import suppress
 
 import numpy as np
 import pytest
+import pyvisa
 
 from owlight.clock import ManualClock
 from owlight.errors import LinkError
 from owlight.link import Link, memory_opener
+from owlight.link.session import Session
 from owlight.vocabulary.events import Event
 from owlight.vocabulary.values import Exchange
 
@@ -134,6 +136,46 @@ def test_nobody_there_is_noticed_at_opening(resource: str) -> None:
     with pytest.raises(LinkError) as trouble:
         link.open(1.0)
     assert trouble.value.role == "power_meter"
+    words = str(trouble.value)
+    assert "power_meter" in words and resource.format(port) in words and "could not be opened: " in words
+    assert "; nothing was sent to it. Check address, cable and power." in words
+    assert "Error:" not in words and "Errno" not in words and not trouble.value.maybe_executed
+
+
+def test_silent_instrument_was_asked_its_name() -> None:
+    with socket.create_server(("127.0.0.1", 0)) as silent:
+        resource = f"TCPIP::127.0.0.1::{silent.getsockname()[1]}::SOCKET"
+        link = Link("power_meter", resource, [].append, ManualClock())
+        with pytest.raises(LinkError, match=r"no answer in time; nothing but \*IDN\? was sent to it") as trouble:
+            link.open(SHORT_S)
+    assert trouble.value.maybe_executed
+
+
+def test_no_address_is_told_as_such() -> None:
+    with pytest.raises(LinkError, match="this is no address of an instrument"):
+        Link("power_meter", "nonsense", [].append, ManualClock()).open(1.0)
+
+
+def test_later_fault_has_words_before_numbers() -> None:
+    def silent(resource: str, deadline_s: float) -> Session:
+        return Silent()
+
+    class Silent:
+        def write(self, message: str, deadline_s: float) -> None:
+            if message != "*IDN?":
+                raise pyvisa.errors.VisaIOError(pyvisa.constants.StatusCode.error_timeout)
+
+        def read(self, deadline_s: float) -> str:
+            return "maker,model,SN1,1.0"
+
+        def abort(self) -> None: ...
+
+        close = abort
+
+    link = Link("laser", "somewhere", [].append, ManualClock(), opener=silent)
+    link.open(1.0)
+    with pytest.raises(LinkError, match=r"failed at 'OUTP ON': no answer in time \(VI_ERROR_TMO\)\. The session is"):
+        link.write("OUTP ON", 1.0)
 
 
 def test_waiting_beats_and_stop_passes_through(talker: Talker) -> None:

@@ -17,6 +17,7 @@ import numpy as np
 
 from owlight.clock import Clock, WallClock
 from owlight.errors import LinkError
+from owlight.link.faults import in_words
 from owlight.link.session import Bytes, Opener, Session
 from owlight.link.stamper import Stamper
 from owlight.link.visa import open_visa
@@ -103,6 +104,7 @@ class Link:
         self._beat = beat
         self._worker: _Worker | None = None
         self._lock = threading.Lock()
+        self._opening = False
 
     @property
     def healthy(self) -> bool:
@@ -112,7 +114,11 @@ class Link:
         """Open and prove: somebody answers `*IDN?`, and after a reopening the same one as before."""
         resource, opener = self.resource, self._opener
         self._worker = _Worker(self.role, lambda: opener(resource, deadline_s))
-        answered = self.query("*IDN?", deadline_s)
+        self._opening = True
+        try:
+            answered = self.query("*IDN?", deadline_s)
+        finally:
+            self._opening = False
         if self.identity_text and answered != self.identity_text:
             self._poison()
             raise LinkError(
@@ -169,17 +175,24 @@ class Link:
             job: _Job[T] = _Job(work)
             trouble = self._wait(worker, job, deadline_s)
             seconds = _REAL.monotonic_s() - began_s
-        sent = worker.session is not None  # else nothing ever left
+        # else nothing ever left; a socket connects at its first message only
+        sent = worker.session is not None and not isinstance(job.fault, ConnectionRefusedError)
         self._tell(message, job, seconds, trouble, sent)
         if trouble:
-            raise LinkError(
-                f"The link to {self.role} ({self.resource}) failed at {message[:80]!r}: {trouble}. "
-                "The session is closed and what was measured is kept; look at the connection and the instrument.",
-                self.role,
-                trouble,
-                sent,
-            )
+            raise LinkError(self._words(message, trouble, sent), self.role, trouble, sent)
         return job.result  # type: ignore[return-value]
+
+    def _words(self, message: str, trouble: str, sent: bool) -> str:
+        if self._opening:
+            heard = f"nothing but {message} was sent" if sent else "nothing was sent"
+            return (
+                f"{self.role} ({self.resource}) could not be opened: {trouble}; {heard} to it. "
+                "Check address, cable and power."
+            )
+        return (
+            f"The link to {self.role} ({self.resource}) failed at {message[:80]!r}: {trouble}. "
+            "The session is closed and what was measured is kept; look at the connection and the instrument."
+        )
 
     def _wait(self, worker: _Worker, job: _Job[T], deadline_s: float) -> str:
         """What went wrong, or nothing. An exception of `beat` passes through, and poisons like any other."""
@@ -196,7 +209,7 @@ class Link:
             raise
         if job.fault is not None:
             self._worker = None  # its thread closes the session and ends
-            return f"{type(job.fault).__name__}: {job.fault}".rstrip(".")
+            return in_words(job.fault)
         return ""
 
     def _poison(self) -> None:
