@@ -165,3 +165,12 @@ def words(value: float, unit: str, digits: int = 6) -> str:
     size = abs(value)
     factor, prefix = next(((f, p) for f, p in _SI_STEPS if size >= f * (1 - 1e-12)), (1e-12, "p"))
     return f"{value / factor:.{digits}g} {prefix}{unit}"
+
+
+def beside(difference_db: float) -> str:
+    """A difference of levels, for what it is held against.
+
+    >>> beside(0.304), beside(-0.304)
+    ('0.30 dB above', '0.30 dB below')
+    """
+    return f"{abs(difference_db):.2f} dB {'below' if difference_db < 0 else 'above'}"

@@ -8,6 +8,7 @@ from typing import TextIO
 
 from owlight.vocabulary.events import AttemptFinished, Event, Note, SafeState, SegmentStarted
 from owlight.vocabulary.plan import Plan
+from owlight.vocabulary.terms import RECEIVED_POWER
 
 
 class Progress:
@@ -28,7 +29,8 @@ class Progress:
             mark = " (simulated)" if plan.simulated else ""
             self.say(f"{plan.name}{mark}: {sum(len(p) for p in plan.order)} stays at {len(plan.points)} points")
         elif isinstance(event, Note):
-            self.say(f"  {event.severity}: {event.words}")
+            first, *more = event.words.split(". ")  # what to do about it stands in the result
+            self.say(f"  {event.severity}: {first}" + "." * bool(more))
         elif isinstance(event, SafeState):
             self.say("Bench safe, confirmed." if event.confirmed else "Safe state NOT confirmed; see below.")
         elif isinstance(event, AttemptFinished):
@@ -50,8 +52,7 @@ class Progress:
 
 
 def _words(event: AttemptFinished) -> str:
-    power = event.received_power.received_power_dbm if event.received_power else None
-    where = f"point {event.attempt.point.index}" if power is None else f"{power:8.3f} dBm"
+    where = _where(event)
     if event.outcome == "failed":
         return f"{where}  failed: {event.reason}"
     locked = [d for d in event.demodulations if d.status == "locked"]
@@ -63,3 +64,13 @@ def _words(event: AttemptFinished) -> str:
     return f"{where}  {errors:6} errors in {bits} bits" + (
         f"  BER {errors / bits:.2e}" if errors else "  (upper limit)"
     )
+
+
+def _where(event: AttemptFinished) -> str:
+    """The power that was measured, or else what was asked for."""
+    point, power = event.attempt.point, event.received_power
+    if power is not None and power.received_power_dbm is not None:
+        return f"{power.received_power_dbm:8.3f} dBm"
+    asked_dbm = point.value(RECEIVED_POWER)
+    asked = f"{asked_dbm:g} dBm asked" if isinstance(asked_dbm, float) else ""
+    return ", ".join(words for words in (point.group, asked) if words) or f"point {point.index}"

@@ -9,25 +9,32 @@ from typing import Any
 
 from owlight.cli.drawing import draw_curve
 from owlight.cli.options import program
-from owlight.jobs.fitted import fitted_ber
+from owlight.quantity import beside, words
+from owlight.vocabulary.result import Sensitivity
 
 Json = dict[str, Any]
+SIMULATED = "SIMULATED, not a measurement of hardware"
 
 
 def print_result(found: Json, bench: str | None) -> None:
     """The run as `demo`, `run` and `show` give it."""
-    mark = "  -  SIMULATED, not a measurement of hardware" if found["simulated"] else ""
-    print(f"\n{found['sequence']}{mark}")
+    print(f"\n{found['sequence']}" + (f"  -  {SIMULATED}" if found["simulated"] else ""))
     print(f"run {found['run_id']}: {found['state']}" + (f" ({found['reason']})" if found["reason"] else ""))
+    if found["ended_utc"]:
+        # a simulated bench's waits pass at once, so its stamps run ahead of the computer's clock
+        clock = " (simulated bench time)" if found["simulated_time"] else ""
+        print(f"begun {found['started_utc'][:19]}Z, ended {found['ended_utc'][:19]}Z{clock}")
     print(_stays(found) + "\n")
     threshold = found["threshold"]
     for group in dict.fromkeys(point["group"] for point in found["points"]):
         _print_curve(found, group, threshold["ber"] if threshold else None)
+    if not found["points"]:
+        _print_readings(found["readings"])
     if not found["sensitivities"]:
         print(f"No sensitivity: {found['words']}")
     print_findings(found["findings"])
     if found["safe_state"] is not None:
-        print_safe_state(found["safe_state"])
+        print_safe_state(found["safe_state"], found["reason"])
     elif found["state"] == "broken off":
         print(
             "Safe state: NOT RECORDED, because the program died and its guard has not written yet. Look at the bench."
@@ -41,9 +48,9 @@ def print_result(found: Json, bench: str | None) -> None:
 
 
 def _stays(found: Json) -> str:
-    words = f"{found['stays_done']} of {found['stays_planned']} stays measured, {found['stays_failed']} failed"
+    told = f"{found['stays_done']} of {found['stays_planned']} stays measured, {found['stays_failed']} failed"
     missing = ", ".join(str(index) for index in found["missing"])
-    return words + (f"; without any stay: point {missing}" if missing else "")
+    return told + (f"; without any stay: point {missing}" if missing else "")
 
 
 def _print_curve(found: Json, group: str, threshold_ber: float | None) -> None:
@@ -53,10 +60,14 @@ def _print_curve(found: Json, group: str, threshold_ber: float | None) -> None:
         print(group)
     curve = None
     if sensitivity is not None:
-        fitted: Json = sensitivity
+        import numpy as np
+
+        from owlight.report.fitted import fitted_ber
+
+        fitted = Sensitivity(**sensitivity)
 
         def curve(powers_dbm: list[float]) -> list[float]:
-            return fitted_ber(fitted, found["modulation"], powers_dbm)
+            return [float(ber) for ber in fitted_ber(fitted, found["modulation"], np.asarray(powers_dbm))]
 
     print(draw_curve(points, threshold_ber, curve))
     print()
@@ -74,10 +85,40 @@ def _print_sensitivity(found: Json, s: Json) -> None:
     print(f"  at BER {threshold['ber']:g} ({threshold['name']}); {s['method']}")
     for penalty in found["penalties"]:
         if penalty["group"] == s["group"]:
-            side = "above" if penalty["penalty_db"] >= 0 else "below"
             against = f"{penalty['reference']} ({penalty['reference_dbm']:.2f} dBm)"
-            print(f"  {abs(penalty['penalty_db']):.2f} dB {side} {against}")
+            print(f"  {beside(penalty['penalty_db'])} {against}")
     print()
+
+
+def _print_readings(stays: list[Json]) -> None:
+    """Settings against mean readings, a row a point; the JSON has every stay."""
+    points: dict[int, list[Json]] = {}
+    for stay in stays:
+        points.setdefault(stay["point"], []).append(stay)
+    if not points:
+        return
+    swept = list(dict.fromkeys(setting["term"] for stay in stays for setting in stay["settings"]))
+    read = list(dict.fromkeys(reading["term"] for stay in stays for reading in stay["readings"]))
+    rows = [[*swept, "stays", *read]]
+    for _, at_point in sorted(points.items()):
+        set_to = {setting["term"]: _shown(setting) for setting in at_point[0]["settings"]}
+        means = [_mean([r for stay in at_point for r in stay["readings"] if r["term"] == term]) for term in read]
+        rows.append([*(set_to.get(term, "") for term in swept), str(len(at_point)), *means])
+    widths = [max(len(row[column]) for row in rows) for column in range(len(rows[0]))]
+    for row in rows:
+        print("  ".join(f"{cell:>{width}}" for cell, width in zip(row, widths, strict=True)))
+    print()
+
+
+def _mean(readings: list[Json]) -> str:
+    values = [reading["value"] for reading in readings if reading["value"] is not None]
+    if not values:
+        return "no number" if readings else "not read"
+    return _shown({"value": sum(values) / len(values), "unit": readings[0]["unit"]})
+
+
+def _shown(value: Json) -> str:
+    return words(value["value"], value["unit"]) if isinstance(value["value"], float) else str(value["value"])
 
 
 def print_findings(findings: list[Json]) -> None:
@@ -88,12 +129,16 @@ def print_findings(findings: list[Json]) -> None:
         print(f"  {check['finding']:13} {check['name']}, {check['subject']}: {check['words']}")
 
 
-def print_safe_state(safe: Json) -> None:
+def print_safe_state(safe: Json, told: str = "") -> None:
+    """Why a step is unconfirmed stands below it, unless it was `told` above."""
     by = f", by {safe['by']}" if "by" in safe else ""
     print("Safe state: " + ("confirmed by read-back" if safe["confirmed"] else "NOT CONFIRMED") + by)
     for step in safe["steps"]:
         word = "confirmed" if step["confirmed"] else "UNCONFIRMED"
-        print(f"  {step['role']:17} {step['words']}: {word} (read back {step['read_back'] or 'nothing'})")
+        asked, _, reason = step["words"].partition(": ")
+        print(f"  {step['role']:17} {asked}: {word} (read back {step['read_back'] or 'nothing'})")
+        if reason and reason not in told:
+            print(textwrap.fill(reason, _columns(), initial_indent=" " * 20, subsequent_indent=" " * 20))
 
 
 def _print_next(found: Json, bench: str | None) -> None:
@@ -129,6 +174,8 @@ def print_runs(found: list[Json], folder: Path) -> None:
 
 def print_reproduction(found: Json) -> None:
     """Identical or not, and what differs."""
+    if found["simulated"]:
+        print(SIMULATED)
     if found["identical"]:
         captures = f"all {found['captures_compared']} captures are the same byte for byte, "
         print(
@@ -140,10 +187,10 @@ def print_reproduction(found: Json) -> None:
         print(f"  {line}")
     for name in ("original", "reproduced"):
         s = found[f"sensitivity_{name}"]
-        words = (
+        value = (
             "none" if s is None else f"{s['received_power_dbm']:.3f} dBm ({s['low_dbm']:.3f} to {s['high_dbm']:.3f})"
         )
-        print(f"  sensitivity {name}: {words}")
+        print(f"  sensitivity {name}: {value}")
     print_safe_state(found["safe_state"]) if found["safe_state"] else None
 
 

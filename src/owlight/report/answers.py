@@ -10,10 +10,11 @@ import shlex
 from collections import Counter
 from dataclasses import dataclass
 
+from owlight.quantity import beside
 from owlight.report import differences
 from owlight.report.facts import Facts
 from owlight.report.markup import Inside, Markup, element, together
-from owlight.report.wording import begun, beside, counted, level, moment, number, period, ratio, span
+from owlight.report.wording import begun, counted, level, moment, number, period, ratio, span
 from owlight.vocabulary.events import Check
 from owlight.vocabulary.result import Sensitivity
 from owlight.vocabulary.terms import RECEIVED_POWER

@@ -5,11 +5,12 @@ from __future__ import annotations
 import math
 import shlex
 
+from owlight.quantity import beside
 from owlight.quantity import words as quantity
 from owlight.report.answers import coverage_factor, finding_word, program
 from owlight.report.facts import Facts
 from owlight.report.markup import Inside, Markup, element, table, together
-from owlight.report.wording import NOT_ASSESSED, beside, count, counted, figure, level, number, ratio, ratio_span
+from owlight.report.wording import NOT_ASSESSED, count, counted, figure, level, number, ratio, ratio_span
 from owlight.statistics import mean_readings
 from owlight.vocabulary.events import Check
 from owlight.vocabulary.result import CurvePoint

@@ -30,14 +30,6 @@ def level(power_dbm: float, decimals: int = 2) -> str:
     return f"{number(power_dbm, decimals)} dBm"
 
 
-def beside(difference_db: float, decimals: int = 2) -> str:
-    """
-    >>> beside(0.304), beside(-0.304)
-    ('0.30 dB above', '0.30 dB below')
-    """
-    return f"{abs(difference_db):.{decimals}f} dB {'below' if difference_db < 0 else 'above'}"
-
-
 def ratio(ber: float | None, fixed: bool = False) -> str:
     """Without trailing zeros, unless `fixed` for a column.
 
