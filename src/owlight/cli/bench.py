@@ -15,11 +15,18 @@ def identify(bench: BenchFile, as_json: Json = False) -> None:
 
     found = ask(bench)
     if as_json:
-        print(json.dumps({"bench": bench, "instruments": found}))
-    for answer in [] if as_json else found:
-        print(f"{answer['role']:17} {answer['resource']}")
-        print(f"{'':17} {answer['answer']}: {answer['words']}")
-    raise typer.Exit(0 if all(answer["as_planned"] for answer in found) else 3)
+        print(json.dumps(found))
+    else:
+        _print_mark(found["simulated"])
+        for answer in found["instruments"]:
+            print(f"{answer['role']:17} {answer['resource']}")
+            print(f"{'':17} {answer['answer']}: {answer['words']}")
+    raise typer.Exit(0 if all(answer["as_planned"] for answer in found["instruments"]) else 3)
+
+
+def _print_mark(simulated: bool, words: str = "") -> None:
+    if simulated:
+        print("SIMULATED, no hardware" + (f". {words}" if words else ""))
 
 
 def safe(bench: BenchFile, as_json: Json = False) -> None:
@@ -31,6 +38,7 @@ def safe(bench: BenchFile, as_json: Json = False) -> None:
     if as_json:
         print(json.dumps(found))
     else:
+        _print_mark(found["simulated"], found["words"])
         print_safe_state(found)
     raise typer.Exit(0 if found["confirmed"] else 3)
 

@@ -44,6 +44,11 @@ def surroundings(bench: Bench, world: Path | None) -> Iterator[Surroundings]:
         running.stop()
 
 
+def is_simulated(identity: str) -> bool:
+    """By the answer to `*IDN?`: a bench file may give plain addresses at which simulated instruments are served."""
+    return identity.partition(",")[0].strip() == "Simulated"
+
+
 def simulated_resources(bench: Bench, served: dict[str, dict[str, str]]) -> dict[str, str]:
     """`simulated hislip` and `simulated socket` replaced by the addresses at which the bench is served now."""
     found: dict[str, str] = {}

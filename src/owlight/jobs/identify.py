@@ -6,7 +6,7 @@ from typing import Any
 
 from owlight.errors import BenchError
 from owlight.instrument.instrument import Instrument
-from owlight.jobs.bench_session import Surroundings, surroundings
+from owlight.jobs.bench_session import Surroundings, is_simulated, surroundings
 from owlight.jobs.resolve import Resolved, resolve, world_path
 from owlight.link import Link, Stamper
 from owlight.vocabulary.events import Event
@@ -14,12 +14,14 @@ from owlight.vocabulary.events import Event
 Json = dict[str, Any]
 
 
-def identify(bench_name: str) -> list[Json]:
+def identify(bench_name: str) -> Json:
     """One answer a role, also where nobody answers or somebody unexpected does."""
     resolved = resolve(None, bench_name)
     world = world_path(bench_name, resolved.bench) if resolved.simulated else None
     with surroundings(resolved.bench, world) as around:
-        return [_ask(role, resolved, around) for role in resolved.bench.role]
+        found = [_ask(role, resolved, around) for role in resolved.bench.role]
+    simulated = resolved.simulated or any(is_simulated(answer["words"]) for answer in found)
+    return {"bench": bench_name, "simulated": simulated, "instruments": found}
 
 
 def _ask(role: str, resolved: Resolved, around: Surroundings) -> Json:
