@@ -68,4 +68,25 @@ def test_signals_count_and_are_handed_back() -> None:
         os.kill(os.getpid(), signal.SIGTERM)
         assert stop.level == 2
     assert signal.getsignal(signal.SIGINT) is before
-    assert len(said) == 2
+    stop.look()
+    stop.look()
+    assert said == ["Making the bench safe now."]
+
+
+def test_signal_inside_a_printed_line_waits(tmp_path: Path) -> None:
+    """A stream that is written to from a handler while it is being written to raises, and a night would end of it."""
+    with (tmp_path / "screen").open("w", encoding="utf-8") as screen:
+        speaking: list[str] = []
+
+        def say(words: str) -> None:
+            assert not speaking, "spoken to in the middle of a line"
+            speaking.append(words)
+            os.kill(os.getpid(), signal.SIGINT)
+            print(speaking.pop(), file=screen, flush=True)
+
+        stop = StopRequests(say=say)
+        with stop.on_signals():
+            stop.ask()
+            stop.look()
+    assert stop.level == 2
+    assert (tmp_path / "screen").read_text("utf-8").startswith("Finishing this point")

@@ -17,6 +17,8 @@ from owlight.errors import StopNow
 
 SLICE_S = 0.1
 _EXIT_STOPPED = 130
+_FINISHING = "Finishing this point, then making the bench safe; press again to make it safe at once."
+_AT_ONCE = "Making the bench safe now."
 
 
 class StopRequests:
@@ -24,22 +26,23 @@ class StopRequests:
 
     def __init__(self, stop_file: Path | None = None, say: Callable[[str], None] = lambda words: None) -> None:
         self.level = 0
+        self._said = 0
         self._stop_file = stop_file
         self._say = say
 
     def ask(self, at_least: int | None = None) -> None:
+        """May be called in the middle of anything, even of a line on the screen: so it says nothing itself."""
         self.level = max(self.level + 1, at_least or 0)
-        if self.level == 1:
-            self._say("Finishing this point, then making the bench safe; press again to make it safe at once.")
-        elif self.level == 2:
-            self._say("Making the bench safe now.")
-        else:
+        if self.level > 2:
             # the guard process sees the pipe end and makes the bench safe over links of its own
             os._exit(_EXIT_STOPPED)
 
     def look(self) -> None:
         if self.level < 2 and self._stop_file is not None and self._stop_file.exists():
             self.ask(at_least=2)
+        if self.level > self._said:
+            self._said = self.level
+            self._say(_AT_ONCE if self.level >= 2 else _FINISHING)
 
     @contextmanager
     def on_signals(self) -> Iterator[None]:
