@@ -145,6 +145,30 @@ def test_mistakes_of_every_kind_come_together() -> None:
     assert keys == ["sweep[1].to", "record.readings[1]", "capture.symbols", "capture.symbls"]
 
 
+MISNAMED = QPSK.replace('setting = "received_power"', 'setting = "recieved_power"')
+
+
+def test_wrong_name_hides_no_wrong_value() -> None:
+    text = MISNAMED.replace('from = "-40 dBm"', 'from = "-40 dB"').replace(
+        '"signal_laser.power" =', '"signal_lasr.power" ='
+    )
+    text = text.replace('"signal_lasr.power" = "10 dBm"', '"signal_lasr.power" = "10 m"')
+    text = text.replace('{ received_power = "-36 dBm" }', '{ recieved_power = "-36" }')
+    found = words_of(text)
+    keys = [key for key, _ in found]
+    names = ['settings."signal_lasr.power"', "before[1].wait_until.at.recieved_power", "sweep[1].setting"]
+    assert sorted(keys) == sorted([*names, *names[:2], "sweep[1].from"]), found
+
+
+def test_wrong_name_invents_no_lack() -> None:
+    """A misspelt sweep is still the sweep that the reference point and the measurand need."""
+    assert [key for key, _ in words_of(MISNAMED)] == ["sweep[1].setting"]
+    laser = QPSK.replace('"signal_laser.power" =', '"signal_laser.level" =')
+    assert [key for key, _ in words_of(laser)] == ['settings."signal_laser.level"']
+    point = QPSK.replace('received_power = "-38 dBm"', 'receivd_power = "-38 dBm"')
+    assert [key for key, _ in words_of(point)] == ["reference.receivd_power"]
+
+
 def test_mistakes_carry_their_lines() -> None:
     text = QPSK.replace('step = "0.5 dB"', 'step = "0.7 dB"')
     (problem,) = read_sequence(text, "s.toml").problems

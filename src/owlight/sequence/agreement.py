@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
+from dataclasses import replace
 
 from owlight.errors import Problem
 from owlight.reader import Document, nearest
@@ -22,10 +23,36 @@ _TWO_HANDS = (
 )
 
 
-def disagreements(document: Document[SequenceFile], sequence: Sequence) -> tuple[Problem, ...]:
-    """Problems that no single key shows."""
-    rules = (_parts, _sweeps, _two_hands, _decided_elsewhere, _light, _signal, _reference)
-    return tuple(document.problem(path, words) for rule in rules for path, words in rule(document, sequence))
+def disagreements(
+    document: Document[SequenceFile], sequence: Sequence, unknown: Mapping[str, Term | None]
+) -> tuple[Problem, ...]:
+    """Problems that no single key shows. An `unknown` name counts as what it means, and is not complained of again."""
+    rules = [_parts, _sweeps, _two_hands, _decided_elsewhere, _signal]
+    if None not in unknown.values():  # else what seems to be lacking may be there under its wrong name
+        rules += [_light, _reference]
+    asked = document if document.value is None else replace(document, value=_as_meant(document.value, unknown))
+    guessed = {str(term) for term in unknown.values()}
+    return tuple(
+        document.problem(path, words)
+        for rule in rules
+        for path, words in rule(asked, sequence)
+        if not guessed & {str(part) for part in path} and not _of_sweep(path, document) & unknown.keys()
+    )
+
+
+def _as_meant(file: SequenceFile, unknown: Mapping[str, Term | None]) -> SequenceFile:
+    def name(text: str) -> str:
+        return str(unknown.get(text) or text)
+
+    sweeps = tuple(replace(sweep, setting=name(sweep.setting)) for sweep in file.sweep)
+    return replace(file, sweep=sweeps, reference={name(key): raw for key, raw in file.reference.items()})
+
+
+def _of_sweep(path: Path, document: Document[SequenceFile]) -> set[str]:
+    """The name of the sweep that a path is in."""
+    if document.value is None or path[0] != "sweep" or len(path) < 2:
+        return set()
+    return {document.value.sweep[int(path[1])].setting}
 
 
 Found = Iterator[tuple[Path, str]]

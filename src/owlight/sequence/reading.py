@@ -8,7 +8,7 @@ from owlight.reader.lines import Path
 from owlight.sequence.agreement import disagreements
 from owlight.sequence.file import MeasurandTable, SequenceFile, SweepTable
 from owlight.sequence.model import Axis, Demodulation, Reference, Sequence
-from owlight.sequence.values import drift_unit, number_in, stepped, term_named, value_for
+from owlight.sequence.values import drift_unit, meant, number_in, stepped, term_named, value_for
 from owlight.theory.thresholds import THRESHOLDS
 from owlight.vocabulary.plan import Condition, Measurand
 from owlight.vocabulary.terms import TERMS
@@ -25,7 +25,7 @@ def read_sequence(text: str, file: str) -> Document[Sequence]:
         return Document(file, None, written.problems, written.lines)
     resolving = _Resolving(written)
     sequence = resolving.sequence(written.value)
-    problems = (*resolving.problems, *disagreements(written, sequence))
+    problems = (*resolving.problems, *disagreements(written, sequence, resolving.unknown))
     document: Document[Sequence] = Document(file, sequence, written.problems, written.lines)
     return document.plus(problems)
 
@@ -36,6 +36,8 @@ class _Resolving:
     def __init__(self, document: Document[SequenceFile]) -> None:
         self._document = document
         self.problems: list[Problem] = []
+        self.unknown: dict[str, Term | None] = {}
+        """Names that are no term, and what they certainly mean."""
 
     def _wrong(self, path: Path, words: str) -> None:
         self.problems.append(self._document.problem(path, words))
@@ -63,7 +65,10 @@ class _Resolving:
             return term_named(text, kinds)
         except ValueError as error:
             self._wrong(path, str(error))
+        if text in map(str, TERMS):
             return None
+        self.unknown[text] = meant(text, kinds)
+        return self.unknown[text]
 
     def _value(self, raw: object, term: Term, path: Path) -> Value | None:
         try:
@@ -174,7 +179,7 @@ class _Resolving:
         for place, text in enumerate(file.record.readings):
             path: Path = ("record", "readings", place)
             term = self._term(text, RECORDABLE, path)
-            if term and TERMS[term].type is str:
+            if term and TERMS[term].type is str and text not in self.unknown:
                 self._wrong(path, f"{term} is no number and cannot be logged as a reading")
             elif term:
                 found.append(term)

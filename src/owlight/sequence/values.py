@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import difflib
 import math
 
 from owlight import quantity
@@ -10,6 +11,7 @@ from owlight.vocabulary.terms import ROLES, TERMS, term_of
 from owlight.vocabulary.values import Term, Value
 
 MOST_VALUES = 10_000
+_CERTAIN = 0.85  # a guess is only shown; here a wrong one would invent mistakes
 _POWERS = {"dBm", "W"}
 _TYPE_WORDS = {int: "a whole number", bool: "true or false", str: "a string"}
 _KIND_WORDS = {
@@ -48,6 +50,17 @@ def _unknown(text: str) -> str:
     names = [str(term) for term in TERMS if not role or term.role == role]
     hint = nearest(text, map(str, TERMS)) or f"; {role or 'the bench'} has {', '.join(names)}"
     return f'unknown term "{text}"{hint}'
+
+
+def meant(text: str, kinds: tuple[str, ...]) -> Term | None:
+    """What a name that is unknown certainly means, so that what stands beside it is judged in the same round.
+
+    >>> str(meant("signal_laser.pwer", ("setting",))), meant("signal_laser.frequency", ("setting",))
+    ('signal_laser.power', None)
+    """
+    known = {str(term): term for term, info in TERMS.items() if info.kind in kinds}
+    close = difflib.get_close_matches(text.lower(), known, 1, _CERTAIN)
+    return known[close[0]] if close else None
 
 
 def value_for(raw: object, term: Term) -> Value:
