@@ -160,11 +160,29 @@ def words(value: float, unit: str, digits: int = 6) -> str:
     >>> words(32e9, "Bd"), words(-38.0, "dBm"), words(2.5e-5, "W")
     ('32 GBd', '-38 dBm', '25 µW')
     """
-    if unit in {"dBm", "dB", "nm", "deg", "ppm", "%", ""} or not math.isfinite(value) or value == 0:
-        return f"{value:.{digits}g} {unit}".strip()
-    size = abs(value)
-    factor, prefix = next(((f, p) for f, p in _SI_STEPS if size >= f * (1 - 1e-12)), (1e-12, "p"))
-    return f"{value / factor:.{digits}g} {prefix}{unit}"
+    factor, prefix = _scale(abs(value), unit)
+    return f"{value / factor:.{digits}g} {prefix}{unit}".strip()
+
+
+def scattered(value: float, deviation: float, unit: str) -> str:
+    """Value and standard deviation in one prefix, both to the deviation's second digit (JCGM 100, 7.2.6) or to whole units.
+
+    >>> scattered(1.23614e-5, 3.37e-9, "W"), scattered(-2.6e-10, 6.22e-7, "A"), scattered(10.0, 0.0, "dBm")
+    ('12.3614 ± 0.0034 µW', '0 ± 622 nA', '10 ± 0 dBm')
+    """
+    factor, prefix = _scale(max(abs(value), deviation), unit)
+    if deviation == 0:
+        return f"{value / factor:.6g} ± 0 {prefix}{unit}".strip()
+    decimals = max(1 - math.floor(math.log10(deviation / factor)), 0)
+    # adding zero makes a plain zero of a negative one
+    shown = round(value / factor, decimals) + 0.0
+    return f"{shown:.{decimals}f} ± {deviation / factor:.{decimals}f} {prefix}{unit}".strip()
+
+
+def _scale(size: float, unit: str) -> tuple[float, str]:
+    if unit in {"dBm", "dB", "nm", "deg", "ppm", "%", ""} or not math.isfinite(size) or size == 0:
+        return 1.0, ""
+    return next(((f, p) for f, p in _SI_STEPS if size >= f * (1 - 1e-12)), (1e-12, "p"))
 
 
 def beside(difference_db: float) -> str:

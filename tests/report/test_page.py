@@ -13,6 +13,7 @@ import pytest
 from owlight.logbook.read import open_reader
 from owlight.report import write_report
 from owlight.report.facts import Facts, gather, gather_earlier
+from owlight.report.order_figure import largest_change
 from owlight.report.page import page
 from owlight.vocabulary.events import AttemptFinished, Check, SafeState, SafeStepOutcome
 from owlight.vocabulary.plan import Attempt, Point
@@ -185,6 +186,15 @@ def test_small_repeatability_is_not_zero(facts: Facts) -> None:
     assert "0.0000" not in words_of(text)
 
 
+def test_still_power_is_not_called_motionless(facts: Facts) -> None:
+    stay = facts.history[0]
+    power = stay.received_power
+    assert power is not None and power.tap_before_w is not None
+    still = replace(stay, received_power=replace(power, tap_after_w=power.tap_before_w * (1 + 1e-5)))
+    # 10 log10(1 + 1e-5) = 1e-4 / ln 10 = 4.34e-5
+    assert largest_change(replace(facts, history=(still,))) == "at most 4.34×10⁻⁵ dB"
+
+
 def test_doubt_and_failure_are_shown(facts: Facts) -> None:
     words = words_of(page(facts, None))
     assert "With reserve" in words and "2 of 3 captures locked" in words
@@ -267,8 +277,8 @@ def test_readings_alone_are_the_result(readings_alone: Facts) -> None:
     section = re.findall(r"<h2>Readings</h2>(.*?)</section>", text, re.DOTALL)[0]
     rows = [re.findall(r"<td[^>]*>([^<]*)</td>", row) for row in re.findall(r"<tr>(.*?)</tr>", section)][1:]
     # deviations: of 12 -+ 0.01 twice, of 9 -+ 0.01 and 9.2 -+ 0.01 microwatts, by numpy.std(ddof=1)
-    assert rows[0] == ["15 dB", "", "2", "12 µW", "11.5 nW", "10 dBm", "0 dB"]
-    assert rows[1] == ["16 dB", "", "2", "9.1 µW", "116 nW", "10 dBm", "0 dB"]
+    assert rows[0] == ["15 dB", "", "2", "12.000 ± 0.012 µW", "10 ± 0 dBm"]
+    assert rows[1] == ["16 dB", "", "2", "9.10 ± 0.12 µW", "10 ± 0 dBm"]
     words = words_of(text)
     assert words.index("Readings") < words.index("Findings") and "The curve" not in words
     assert "readings were asked for" in words and "power_meter.power, signal_laser.power at 2 points" in words

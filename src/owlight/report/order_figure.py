@@ -10,7 +10,7 @@ from owlight.report.curve_figure import Size
 from owlight.report.facts import Facts
 from owlight.report.fitted import deviation_db
 from owlight.report.markup import Markup
-from owlight.report.wording import counted, level, number, seconds_between, signed
+from owlight.report.wording import counted, figure, level, seconds_between, signed
 from owlight.statistics import exact_interval
 from owlight.vocabulary.events import AttemptFinished
 
@@ -142,4 +142,4 @@ def _deviation(facts: Facts, stay: AttemptFinished) -> tuple[float, float, float
 def largest_change(facts: Facts) -> str:
     """In words, for the caption."""
     changes = [m.change_db for m in (_mark(facts, s) for s in facts.history) if m.change_db is not None]
-    return f"at most {number(max(abs(c) for c in changes), 3)} dB" if changes else "not read on both sides"
+    return f"at most {figure(max(abs(c) for c in changes))} dB" if changes else "not read on both sides"

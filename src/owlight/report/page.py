@@ -22,8 +22,8 @@ _POINTS = (
     "what the whole power axis may err by stands in the budget."
 )
 _READINGS = (
-    "Each mean is of all readings at the point, in the unit shown, and beside it their standard deviation; "
-    "every single reading is in the logbook."
+    "Each is the mean of all readings at the point ± the standard deviation of a single one; "
+    "every reading is in the logbook."
 )
 
 

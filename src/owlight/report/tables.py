@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 import shlex
 
-from owlight.quantity import beside
+from owlight.quantity import beside, scattered
 from owlight.quantity import words as quantity
 from owlight.report.answers import coverage_factor, finding_word, program
 from owlight.report.facts import Facts
@@ -124,23 +124,21 @@ def readings(facts: Facts) -> Markup | None:
         stays = [stay for stay in well if stay.attempt.point.index == point.index]
         means = {mean.term: mean for mean in mean_readings(reading for stay in stays for reading in stay.readings)}
         set_to = [_shown(term, point.value(term)) for term in swept]
-        figures = [cell for term in read for cell in _mean(means.get(term))]
+        figures = [_mean(means.get(term)) for term in read]
         rows.append((*set_to, "reference" if point.reference else "", str(len(stays)), *figures))
-    heads = (*map(str, swept), "", "stays", *(head for term in read for head in (str(term), "sd of the readings")))
+    heads = (*map(str, swept), "", "stays", *map(str, read))
     numeric = frozenset(range(len(heads))) - {len(swept)}
     return table(heads, rows, numeric) if rows else None
 
 
-def _mean(mean: Reading | None) -> tuple[str, str]:
+def _mean(mean: Reading | None) -> str:
     if mean is None:
-        return "not read", ""
+        return "not read"
     if mean.value is None:
-        return "no number", ""
-    unit = _unit(mean.term)
-    deviation = mean.standard_deviation
-    # a level scatters by a ratio
-    scatter = "" if deviation is None else quantity(deviation, "dB" if unit == "dBm" else unit, 3)
-    return _shown(mean.term, mean.value), scatter
+        return "no number"
+    if mean.standard_deviation is None:
+        return _shown(mean.term, mean.value)
+    return scattered(mean.value, mean.standard_deviation, _unit(mean.term)).replace("-", "−")
 
 
 def _shown(term: Term, value: Value | None) -> str:
