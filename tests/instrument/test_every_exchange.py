@@ -8,6 +8,7 @@ from pathlib import Path
 
 import pytest
 
+from owlight.bench import LightState
 from owlight.errors import BenchError
 from owlight.instrument.open_bench import OpenBench
 from owlight.vocabulary.captures import CaptureId
@@ -24,9 +25,9 @@ def measure(bench: OpenBench) -> None:
     bench.set(Term("oscilloscope", "record_length"), 2_000)
     for channel in range(1, 5):
         bench.set(Term("oscilloscope", f"range_{channel}"), 0.2)
-    bench.set_wavelength(1550.12)
+    bench.set_wavelength(1550.12, 1550.12)
     bench.zero_meter()
-    bench.light_up(10.0, 10.0)
+    bench.light_up(LightState(True, 10.0, True, 11.0))
     bench.set_received_power(-36.0)
     bench.capture(CaptureId(0, 1, 1), 1, 0.0, REQUEST)
     bench.read(Term("power_meter", "power"), count=3, phase="after")

@@ -25,6 +25,7 @@ from owlight.vocabulary.values import Applied, Identity, Reading, Term
 ATTENUATION = Term("attenuator", "attenuation")
 SIGNAL_ON, SIGNAL_POWER = Term("signal_laser", "output"), Term("signal_laser", "power")
 LO_ON = Term("local_oscillator", "output")
+BOTH = LightState(True, 10.0, True, 11.0)  # 10 dBm at the LO port
 REQUEST = CaptureRequest(20_000, 80e9, 20_000, ("XI", "XQ", "YI", "YQ"), "fixed", "all")
 
 
@@ -37,7 +38,7 @@ def commands(joined) -> list[tuple[str, str]]:
 def lit(joined, tmp_path: Path):
     bench = joined.open(tmp_path)
     bench.set(Term("pattern_source", "output"), True)
-    bench.light_up(10.0, 10.0)
+    bench.light_up(BOTH)
     return bench
 
 
@@ -106,7 +107,7 @@ def test_lock_of_another_host_is_respected(tmp_path: Path) -> None:
 # ---- limits ----
 
 
-def test_light_on_is_refused_at_open_attenuator(joined, tmp_path: Path) -> None:
+def test_light_comes_on_behind_closed_attenuator(joined, tmp_path: Path) -> None:
     """The attenuator powers up at 0 dB; 16 dBm through it would reach the receiver with more than its limit."""
     paper = replace(joined.paper, light_path=replace(joined.paper.light_path, transmitter_least_loss_db=0.0))
     joined.paper = paper
@@ -114,12 +115,14 @@ def test_light_on_is_refused_at_open_attenuator(joined, tmp_path: Path) -> None:
         assert bench.light.attenuation_db == 0.0
         bench.set(SIGNAL_POWER, 16.0)
         with pytest.raises(SafetyRefusal, match="receiver signal input"):
-            bench.set(SIGNAL_ON, True, point=7)
+            bench.set_at_once(SIGNAL_ON, True, point=7)
         assert ("signal_laser", "OUTP:STAT 1") not in commands(joined)
-        bench.set(ATTENUATION, 60.0)
         bench.set(SIGNAL_ON, True)
+        lit_by = [("attenuator", "INP:ATT 60"), ("signal_laser", "OUTP:STAT 1")]
+        assert commands(joined)[-2:] == lit_by
         with pytest.raises(SafetyRefusal):
             bench.set(ATTENUATION, 0.0)
+        assert commands(joined)[-2:] == lit_by  # refused as a whole: not even its first step was taken
 
 
 def test_unknown_state_counts_as_worst(joined, tmp_path: Path) -> None:
@@ -131,7 +134,10 @@ def test_unknown_state_counts_as_worst(joined, tmp_path: Path) -> None:
             bench.set(ATTENUATION, 40.0)
         assert bench.light.attenuation_db is None
         with pytest.raises(SafetyRefusal, match="unknown"):
+            bench.set_at_once(SIGNAL_POWER, 16.0)
+        with pytest.raises(InstrumentError, match="attenuator"):  # it cannot be closed, so no power is raised
             bench.set(SIGNAL_POWER, 16.0)
+        assert ("signal_laser", "SOUR:POW 16") not in commands(joined)
         joined.spoil.clear()
         bench.set(ATTENUATION, 60.0)
         bench.set(SIGNAL_POWER, 16.0)
@@ -154,7 +160,7 @@ def test_lo_power_is_turned_into_laser_power(joined, tmp_path: Path) -> None:
 
 def test_light_comes_up_in_the_safe_order(joined, tmp_path: Path) -> None:
     with joined.open(tmp_path) as bench:
-        bench.light_up(10.0, 8.0)
+        bench.light_up(replace(BOTH, signal_power_dbm=8.0))
         assert [message for _, message in commands(joined)] == [
             "SOUR:BIAS:STAT 1",
             "INP:ATT 60",
@@ -170,7 +176,7 @@ def test_light_comes_up_in_the_safe_order(joined, tmp_path: Path) -> None:
 def test_wavelength_changes_in_the_dark_everywhere(joined, tmp_path: Path) -> None:
     with lit(joined, tmp_path) as bench:
         joined.heard.clear()
-        bench.set_wavelength(1551.0)
+        bench.set_wavelength(1551.0, 1551.1)
         sent = commands(joined)
         first_wavelength = next(n for n, (_, m) in enumerate(sent) if "WAV" in m)
         assert [m for _, m in sent[:first_wavelength]] == ["INP:ATT 60", "OUTP:STAT 0", "OUTP:STAT 0"]
@@ -181,6 +187,32 @@ def test_wavelength_changes_in_the_dark_everywhere(joined, tmp_path: Path) -> No
             "attenuator",
         }
         assert sent[-2:] == [("local_oscillator", "OUTP:STAT 1"), ("signal_laser", "OUTP:STAT 1")]
+        assert joined.simulated["local_oscillator"].value("wavelength") == pytest.approx(1551.1)
+        joined.heard.clear()
+        bench.set_wavelength(1551.0, 1551.1)
+        assert joined.heard == []  # it stands so: no reason to darken
+
+
+def test_sweeping_one_wavelength_leaves_the_other(joined, tmp_path: Path) -> None:
+    with lit(joined, tmp_path) as bench:
+        for signal_nm, lo_nm, roles in (
+            (1551.0, None, {"signal_laser", "power_meter", "attenuator"}),
+            (None, 1551.0, {"local_oscillator"}),
+        ):
+            joined.heard.clear()
+            bench.set_wavelength(signal_nm, lo_nm)
+            sent = commands(joined)
+            assert {role for role, message in sent if "WAV" in message} == roles
+            dark = [place for place, (_, message) in enumerate(sent) if message == "OUTP:STAT 0"]
+            assert len(dark) == 2 and dark[1] < next(n for n, (_, m) in enumerate(sent) if "WAV" in m)
+
+
+def test_wavelength_of_a_lit_laser_is_refused(joined, tmp_path: Path) -> None:
+    with lit(joined, tmp_path) as bench:
+        joined.heard.clear()
+        with pytest.raises(BenchError, match="only in the dark"):
+            bench.set(Term("local_oscillator", "wavelength"), 1551.0)
+        assert joined.heard == []
 
 
 def test_wavelength_outside_calibration_touches_nothing(joined, tmp_path: Path) -> None:
@@ -340,7 +372,12 @@ def test_dead_attenuator_does_not_keep_the_sources_on(joined, tmp_path: Path) ->
             bench.read_setting(ATTENUATION)
         safe = bench.make_safe()
         assert not safe.confirmed
-        assert [step.confirmed for step in safe.steps] == [False, True, True]
+        # a dead link may hide an open attenuator, so the sources did not wait for it
+        assert [(step.role, step.confirmed) for step in safe.steps] == [
+            ("signal_laser", True),
+            ("local_oscillator", True),
+            ("attenuator", False),
+        ]
     assert joined.simulated["signal_laser"].value("output") is False
     assert joined.simulated["local_oscillator"].value("output") is False
 
@@ -375,7 +412,7 @@ def test_dialects_reach_the_safe_state_too(join_with, tmp_path: Path) -> None:
     for signal, attenuator in (("laser_in_watts", "attenuator_actual"), ("laser_in_frequency", "attenuator_negative")):
         joined = join_with(signal_laser=signal, attenuator=attenuator)
         with joined.open(tmp_path) as bench:
-            bench.light_up(10.0, 10.0)
+            bench.light_up(BOTH)
             assert joined.simulated["signal_laser"].value("output") is True
             assert bench.make_safe().confirmed
         assert joined.simulated["signal_laser"].value("output") is False

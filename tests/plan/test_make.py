@@ -154,3 +154,56 @@ def test_disk_follows_what_is_kept(plan_of: PlanOf) -> None:
     # 27 stays and 4 visits of the reference; 9 points and the reference
     assert filled("all") - filled("none") == 31 * one == filled("doubtful") - filled("none")
     assert filled("one per point") - filled("none") == 10 * one
+
+
+def test_zero_dbm_is_a_power(plan_of: PlanOf) -> None:
+    """The laser at exactly 0 dBm, swept: its reach is judged with it and not with some other power, or with none."""
+    swept = {
+        '"signal_laser.power" = "10 dBm"\n': "",
+        'setting = "lo_power"\nvalues = ["6 dBm", "9 dBm", "12 dBm"]': 'setting = "signal_laser.power"\n'
+        'values = ["0 dBm", "10 dBm"]',
+        '"local_oscillator.wavelength" = "1550.12 nm"': 'lo_power = "9 dBm"',
+        'to = "-36 dBm"': 'to = "-22 dBm"',
+    }
+    # 0 dBm less 12, 1.5 and 10.1 dB is -23.6 dBm, so -23 and -22 dBm are out of reach for it
+    with pytest.raises(
+        InputError, match=r"point 17 asks for -23 dBm, which the attenuator cannot give.* to -23\.60 dBm"
+    ):
+        plan_of("lo_power_map", swept)
+
+
+@pytest.mark.parametrize("role", ["power_meter", "attenuator"])
+def test_wavelength_beside_the_signal_is_refused(plan_of: PlanOf, role: str) -> None:
+    own = f'"{role}.wavelength" = '
+    beside = '"signal_laser.power" = "10 dBm"'
+    with pytest.raises(InputError, match=rf"{role}\.wavelength: 1551 nm contradicts signal_laser\.wavelength"):
+        plan_of("power_log", {beside: f'{beside}\n{own}"1551 nm"'})
+    assert plan_of("power_log", {beside: f'{beside}\n{own}"1550.12 nm"'}).points
+
+
+def test_received_power_of_a_dark_laser_is_refused(plan_of: PlanOf) -> None:
+    beside = 'lo_power = "12 dBm"'
+    with pytest.raises(InputError, match=r"signal_laser\.output: is off where received_power is asked for"):
+        plan_of("qpsk_sensitivity", {beside: f'{beside}\n"signal_laser.output" = false'})
+
+
+def test_condition_sets_nothing_that_stays(plan_of: PlanOf) -> None:
+    with pytest.raises(InputError, match=r"receiver\.gain: is set for a condition but neither"):
+        at = 'at = { received_power = "-36 dBm"'
+        plan_of("qpsk_sensitivity", {at: f'{at}, "receiver.gain" = "3 dB"'})
+
+
+def test_later_condition_is_judged_with_what_stands(plan_of: PlanOf) -> None:
+    """The power that the first condition set still stands in the second."""
+    beside = '"signal_laser.output" = true '
+    before = """[[before]]
+wait_until = { reading = "power_meter.power", at = { "signal_laser.power" = "13 dBm" }, drifts_less_than = "1 dB", \
+over = "1 min", at_most = "2 min" }
+[[before]]
+wait_until = { reading = "power_meter.power", at = { "attenuator.attenuation" = "10 dB" }, drifts_less_than = "1 dB", \
+over = "1 min", at_most = "2 min" }
+[[sweep]]"""
+    powers = plan_of("power_log", {"[[sweep]]": before, beside: beside}).highest_power
+    found = {power.plane: power.power_dbm for power in powers[:3]}
+    # 13 + 0.5 - 10 - 1 - (10 - 0.3) - 9.6
+    assert found[SIGNAL_INPUT] == pytest.approx(-16.8)

@@ -9,7 +9,7 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 import pytest
 
-from owlight.bench import Bench
+from owlight.bench import Bench, LightState
 from owlight.clock import ManualClock
 from owlight.errors import BenchError
 from owlight.instrument.steering import ReceivedPowerSet
@@ -21,7 +21,7 @@ from owlight.run.night import Night
 from owlight.vocabulary.captures import Capture, CaptureId, Demodulation, Lane, Tributary
 from owlight.vocabulary.events import AttemptFinished, Event, SafeState, SafeStepOutcome
 from owlight.vocabulary.plan import CaptureRequest, Plan
-from owlight.vocabulary.values import Reading, Term
+from owlight.vocabulary.values import Reading, Setting, Term
 
 TAP_W = 1e-6
 
@@ -49,14 +49,17 @@ class ListedBench:
     def set(self, term: Term, value: object) -> None:
         self._note("set", str(term), value)
 
-    def set_wavelength(self, wavelength_nm: float) -> None:
-        self._note("wavelength", wavelength_nm)
+    def set_wavelength(self, signal_nm: float | None, lo_nm: float | None = None) -> None:
+        self._note("wavelength", signal_nm, lo_nm)
+
+    def confirm(self, setting: Setting) -> None:
+        self._note("confirm", str(setting.term), setting.value)
 
     def zero_meter(self) -> None:
         self._note("zero")
 
-    def light_up(self, lo_power_dbm: float | None, signal_power_dbm: float | None) -> None:
-        self._note("light", lo_power_dbm, signal_power_dbm)
+    def light_up(self, wanted: LightState) -> None:
+        self._note("light", wanted)
 
     def set_received_power(self, received_power_dbm: float) -> ReceivedPowerSet:
         self._note("received power", received_power_dbm)

@@ -84,6 +84,18 @@ class Instrument:
         self._setting(term)
         return self._read_back(term)
 
+    def confirm(self, term: Term, value: Value) -> Value:
+        """Asked now and held against `value`; InstrumentError where it stands otherwise. Nothing is set."""
+        found = self.read_setting(term)
+        if found is None or not _near(value, found, self.driver.tolerance_of(term)):
+            stands = "not a number" if found is None else _words(term, found)
+            raise InstrumentError(
+                f"{term} stands at {stands} where {_words(term, value)} was asked for. Nothing is measured with it; "
+                "look for another setting that moves it, or for somebody at the instrument.",
+                self.role,
+            )
+        return found
+
     def read(self, term: Term, count: int = 1, phase: str = "") -> values.Reading:
         """Mean and standard deviation of `count` fresh readings; None as soon as one of them is not a number."""
         if term.name in self.driver.setting:

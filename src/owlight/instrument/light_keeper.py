@@ -32,19 +32,40 @@ class LightKeeper:
         self._bench = bench
         self.state = LightState()
 
-    def judge(self, term: Term, value: Value, point: int | None = None) -> None:
-        """Before a setting: SafetyRefusal if it could exceed a limit. What darkens is never refused."""
+    def judge(self, term: Term, value: Value, point: int | None = None, closed: bool = False) -> None:
+        """Before a setting: SafetyRefusal if it could exceed a limit. What darkens is never refused.
+
+        `closed`: as it would stand with the attenuator at its maximum, where it is put before power goes up.
+        """
         if term == BIAS and not value and self.lit:
             raise SafetyRefusal(
                 "The receiver's bias must stay on while light could reach its photodiodes. "
                 "Nothing was set; turn the sources off first."
             )
         if term in FIELDS and not self._darkens(term, value):
-            refuse_if_over(self._bench, self._with(term, value), point)
+            state = self._with(term, value)
+            if closed:
+                state = replace(state, attenuation_db=self._bench.light_path.attenuator_maximum_db)
+            refuse_if_over(self._bench, state, point)
 
     @property
     def lit(self) -> bool:
         return self.state.signal_on is not False or self.state.lo_on is not False
+
+    def brightens(self, term: Term, value: Value, tolerance: float) -> bool:
+        """Whether more light could come out than now; a source proven off and an attenuator before it give none."""
+        if term not in FIELDS:
+            return False
+        stands = getattr(self.state, FIELDS[term])
+        if isinstance(value, bool):
+            return value and stands is not True
+        lit = self.state.lo_on if term == LO_POWER else self.state.signal_on
+        if lit is False:
+            return False
+        if term == ATTENUATION:
+            stands = self._bench.light_path.attenuator_maximum_db if stands is None else stands
+            return float(value) < stands - tolerance
+        return stands is None or float(value) > stands + tolerance
 
     def _darkens(self, term: Term, value: Value) -> bool:
         stands = getattr(self.state, FIELDS[term])

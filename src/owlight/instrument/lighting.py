@@ -5,8 +5,9 @@ from __future__ import annotations
 import math
 from typing import TYPE_CHECKING
 
+from owlight.bench import LightState
 from owlight.errors import BenchError, InstrumentError
-from owlight.instrument.light_keeper import ATTENUATION, BIAS, LO_OUTPUT, SIGNAL_OUTPUT, SIGNAL_POWER
+from owlight.instrument.light_keeper import ATTENUATION, BIAS, FIELDS, LO_OUTPUT, LO_POWER, SIGNAL_OUTPUT, SIGNAL_POWER
 from owlight.quantity import watts, words
 from owlight.vocabulary.values import Term
 
@@ -16,9 +17,9 @@ if TYPE_CHECKING:
 METER = Term("power_meter", "power")
 ZERO = Term("power_meter", "zero")
 AVERAGING = Term("power_meter", "averaging_time")
-_WAVELENGTHS = tuple(
-    Term(role, "wavelength") for role in ("signal_laser", "local_oscillator", "power_meter", "attenuator")
-)
+SIGNAL_WAVELENGTH = Term("signal_laser", "wavelength")
+LO_WAVELENGTH = Term("local_oscillator", "wavelength")
+_FOLLOW_THE_SIGNAL = (SIGNAL_WAVELENGTH, Term("power_meter", "wavelength"), Term("attenuator", "wavelength"))
 _DARK_OVER_FLOOR = 10.0
 """A point is refused below ten times the floor, so darkness is what no point could be taken for."""
 _ZERO_READINGS = 5
@@ -26,20 +27,28 @@ _COVERAGE = 3.0
 """A short averaging window scatters by more than the floor; that is no zero gone wrong."""
 
 
-def light_up(bench: OpenBench, lo_power_dbm: float | None, signal_power_dbm: float | None) -> None:
-    """Bias, attenuator maximum read back, local oscillator, signal; a power of None stays as it stands."""
+def light_up(bench: OpenBench, wanted: LightState) -> None:
+    """Bias, attenuator maximum read back, local oscillator, signal; a power of None stays as it stands.
+
+    A source that is not wanted is turned off: somebody may have left it on.
+    """
     if bench.knows(BIAS):
         bench.set(BIAS, True)
     if bench.knows(ATTENUATION):
         bench.set(ATTENUATION, bench.paper.light_path.attenuator_maximum_db)
-    if bench.knows(LO_OUTPUT):
-        if lo_power_dbm is not None:
-            bench.set_lo_power(lo_power_dbm)
-        bench.set(LO_OUTPUT, True)
-    if bench.knows(SIGNAL_OUTPUT):
-        if signal_power_dbm is not None:
-            bench.set(SIGNAL_POWER, signal_power_dbm)
-        bench.set(SIGNAL_OUTPUT, True)
+    _light_source(bench, LO_OUTPUT, wanted.lo_on, LO_POWER, wanted.lo_power_dbm)
+    _light_source(bench, SIGNAL_OUTPUT, wanted.signal_on, SIGNAL_POWER, wanted.signal_power_dbm)
+
+
+def _light_source(bench: OpenBench, output: Term, on: bool | None, power: Term, power_dbm: float | None) -> None:
+    if not bench.knows(output):
+        return
+    if not on and getattr(bench.light, FIELDS[output]) is not False:
+        bench.set(output, False)
+    if power_dbm is not None:
+        bench.set(power, power_dbm)
+    if on:
+        bench.set(output, True)
 
 
 def make_dark(bench: OpenBench) -> None:
@@ -51,8 +60,29 @@ def make_dark(bench: OpenBench) -> None:
             bench.set(output, False)
 
 
-def set_wavelength(bench: OpenBench, wavelength_nm: float) -> None:
-    """In the dark: sources, meter and attenuator together. Light that was on comes on again behind the maximum."""
+def set_wavelength(bench: OpenBench, signal_nm: float | None, lo_nm: float | None) -> None:
+    """In the dark, both sources at once; meter and attenuator follow the signal. None stays as it stands.
+
+    Light that was on comes on again behind the maximum. Where all stands as asked nothing is darkened.
+    """
+    if signal_nm is not None:
+        _refuse_uncalibrated(bench, signal_nm)
+    asked = dict.fromkeys(_FOLLOW_THE_SIGNAL, signal_nm) | {LO_WAVELENGTH: lo_nm}
+    wanted = {term: nm for term, nm in asked.items() if nm is not None and bench.knows(term)}
+    if all(bench.was_set(term, nm) for term, nm in wanted.items()):
+        return
+    was = bench.light
+    make_dark(bench)
+    for term, nm in wanted.items():
+        bench.set(term, nm)
+    # only what was proven to be on: unknown light is not lit again
+    if bench.knows(LO_OUTPUT) and was.lo_on:
+        bench.set(LO_OUTPUT, True)
+    if bench.knows(SIGNAL_OUTPUT) and was.signal_on:
+        bench.set(SIGNAL_OUTPUT, True)
+
+
+def _refuse_uncalibrated(bench: OpenBench, wavelength_nm: float) -> None:
     record = bench.paper.plane_minus_tap
     if abs(wavelength_nm - record.wavelength_nm) > record.wavelength_span_nm:
         raise BenchError(
@@ -60,16 +90,6 @@ def set_wavelength(bench: OpenBench, wavelength_nm: float) -> None:
             f"{words(record.wavelength_span_nm, 'nm')}, not at {words(wavelength_nm, 'nm')}. "
             "Nothing was set; choose a wavelength inside, or calibrate the path there."
         )
-    was = bench.light
-    make_dark(bench)
-    for term in _WAVELENGTHS:
-        if bench.knows(term):
-            bench.set(term, wavelength_nm)
-    # only what was proven to be on: unknown light is not lit again
-    if bench.knows(LO_OUTPUT) and was.lo_on:
-        bench.set(LO_OUTPUT, True)
-    if bench.knows(SIGNAL_OUTPUT) and was.signal_on:
-        bench.set(SIGNAL_OUTPUT, True)
 
 
 def zero_meter(bench: OpenBench) -> None:

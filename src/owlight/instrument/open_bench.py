@@ -23,13 +23,15 @@ from owlight.instrument.safe_state import STEP_S, take_step
 from owlight.instrument.steering import ReceivedPowerSet
 from owlight.link import Link, Opener, Stamper, open_visa
 from owlight.plan import safe_steps
+from owlight.scpi import may_be, tells_serial
 from owlight.vocabulary.captures import Capture, CaptureId, Lane
 from owlight.vocabulary.events import Emit, Event, Note, SafeState, SafeStepOutcome
 from owlight.vocabulary.plan import CaptureRequest, SafeStep
 from owlight.vocabulary.terms import LO_POWER
-from owlight.vocabulary.values import Applied, Identity, Reading, Term, Value
+from owlight.vocabulary.values import Applied, Identity, Reading, Setting, Term, Value
 
 _SAMPLE_RATE = Term("oscilloscope", "sample_rate")
+_BY_ACTION = (lighting.SIGNAL_WAVELENGTH, lighting.LO_WAVELENGTH)
 
 
 class OpenBench:
@@ -58,6 +60,7 @@ class OpenBench:
         self._locks: list[SerialLock] = []
         self._dark_before_all = False
         self._touched = False
+        self._attenuator_trusted = True
         self._steps = safe_steps(bench, drivers, resources)
         self._instruments = {
             role: Instrument(role, drivers[role], self._link(role, resources[role]), self.emit, self.stamper, clock)
@@ -86,7 +89,7 @@ class OpenBench:
             instrument.link.open()
             identity = instrument.identify()
             self._prove(identity)
-            lasting = identity.serial_number if identity.serial_number not in ("", "0") else identity.resource
+            lasting = identity.serial_number if tells_serial(identity.serial_number) else identity.resource
             # one laser may serve as signal and local oscillator; a bench that is simulated for this run is ours alone
             if lasting not in held and not self.paper.role[role].resource.startswith("simulated "):
                 held[lasting] = role
@@ -100,10 +103,10 @@ class OpenBench:
 
     def _prove(self, found: Identity) -> None:
         planned = self.paper.role[found.role].serial_number
-        if found.serial_number in ("", "0"):
+        if not tells_serial(found.serial_number):
             words = f"{found.role} does not tell its serial number; that it is {planned} rests on the bench file alone."
             self.emit(Note(self.stamper.stamp(), "warning", words, found.role))
-        elif planned and found.serial_number != planned:
+        elif not may_be(found.serial_number, planned):
             raise InstrumentError(
                 f"As {found.role} the bench file expects serial number {planned}, but {found.maker} {found.model} with "
                 f"serial number {found.serial_number} answers at {found.resource}. Nothing was set; "
@@ -119,9 +122,35 @@ class OpenBench:
             self.emit(Note(self.stamper.stamp(), "warning", words, identity.role))
 
     def set(self, term: Term, value: Value, point: int | None = None) -> Applied:
-        """Judge, set, prove. The local oscillator's power at the receiver is turned into that of its laser."""
+        """Judge, set, prove. The local oscillator's power at the receiver is turned into that of its laser.
+
+        Attenuation comes before power: where a source gives more the attenuator is closed first and stays so, and an
+        attenuator opens in small steps with a look at the tap.
+        """
         if term == LO_POWER:
-            return self.set_lo_power(float(value))
+            return self.set_lo_power(float(value), point)
+        if term in _BY_ACTION and self._could_be_lit(term.role):
+            raise BenchError(
+                f"{term} changes only in the dark, and the {term.role} is not proven to be off. "
+                "Nothing was set; change it by set_wavelength."
+            )
+        tolerance = self.tolerance_of(term)
+        if not self._keeper.brightens(term, value, tolerance):
+            return self.set_at_once(term, value, point)
+        if term == light_keeper.ATTENUATION:
+            return steering.approach(self, float(value), point)
+        self._keeper.judge(term, value, point, closed=self.knows(light_keeper.ATTENUATION))
+        steering.close_attenuator(self)
+        return self.set_at_once(term, value, point)
+
+    def _could_be_lit(self, role: str) -> bool:
+        return (self.light.signal_on if role == "signal_laser" else self.light.lo_on) is not False
+
+    def judge(self, term: Term, value: Value, point: int | None = None) -> None:
+        self._keeper.judge(term, value, point)
+
+    def set_at_once(self, term: Term, value: Value, point: int | None = None) -> Applied:
+        """One judged command. Whoever calls it has seen to the order of attenuation and power."""
         instrument = self._instrument(term)
         self._keeper.judge(term, value, point)
         self._touched = True
@@ -141,6 +170,17 @@ class OpenBench:
         found = self._instrument(term).read_setting(term)
         self._keeper.learn(term, found)
         return found
+
+    def confirm(self, setting: Setting) -> None:
+        """InstrumentError where a setting no longer stands as it was asked for."""
+        term, value = setting.term, setting.value
+        if term == LO_POWER:
+            term, value = light_keeper.LO_POWER, lo_laser_power_dbm(self.paper, float(value))
+        self._keeper.learn(term, self._instrument(term).confirm(term, value))
+
+    def distrust_attenuator(self) -> None:
+        """It is not where it was left: darkness now begins with the sources."""
+        self._attenuator_trusted = False
 
     def act(self, term: Term) -> None:
         if term == lighting.ZERO:
@@ -166,6 +206,11 @@ class OpenBench:
             self._stands[term] = found
         return self._stands[term]
 
+    def was_set(self, term: Term, value: float) -> bool:
+        """Whether it was set here, and read back at this value."""
+        stands = self._stands.get(term)
+        return isinstance(stands, float) and abs(stands - value) <= self.tolerance_of(term) * (1 + 1e-9)
+
     def _instrument(self, term: Term) -> Instrument:
         if term.role not in self._instruments:
             raise BenchError(f"The bench has no {term.role}, so {term} does not exist. Add the role to the bench file.")
@@ -174,15 +219,19 @@ class OpenBench:
     def zero_meter(self) -> None:
         lighting.zero_meter(self)
 
-    def set_wavelength(self, wavelength_nm: float) -> None:
-        lighting.set_wavelength(self, wavelength_nm)
+    def set_wavelength(self, signal_nm: float | None, lo_nm: float | None = None) -> None:
+        """One action in the dark; meter and attenuator follow the signal. None leaves a wavelength as it stands."""
+        lighting.set_wavelength(self, signal_nm, lo_nm)
 
-    def light_up(self, lo_power_dbm: float | None, signal_power_dbm: float | None) -> None:
-        """Bias, attenuator maximum, local oscillator, signal; None leaves a power as it stands."""
-        lighting.light_up(self, lo_power_dbm, signal_power_dbm)
+    def light_up(self, wanted: LightState) -> None:
+        """Bias, attenuator maximum, local oscillator, signal: the sources that are wanted on, and no other.
 
-    def set_lo_power(self, lo_power_dbm: float) -> Applied:
-        return self.set(light_keeper.LO_POWER, lo_laser_power_dbm(self.paper, lo_power_dbm))
+        Powers are those of the lasers, None leaves one as it stands; the attenuator stays at its maximum.
+        """
+        lighting.light_up(self, wanted)
+
+    def set_lo_power(self, lo_power_dbm: float, point: int | None = None) -> Applied:
+        return self.set(light_keeper.LO_POWER, lo_laser_power_dbm(self.paper, lo_power_dbm), point)
 
     def set_received_power(self, received_power_dbm: float) -> ReceivedPowerSet:
         return steering.set_received_power(self, received_power_dbm)
@@ -211,12 +260,24 @@ class OpenBench:
         return float(found) if isinstance(found, float) else float("nan")
 
     def make_safe(self) -> SafeState:
-        """Attenuator maximum, signal off, local oscillator off; each on its own, each confirmed or said not to be."""
+        """Attenuator maximum, signal off, local oscillator off; each on its own, each confirmed or said not to be.
+
+        An attenuator that cannot be trusted comes last: it may stand open, and the sources must not wait for it.
+        """
         self._dark_before_all = True
-        outcomes = tuple(self._safe_step(step) for step in self._steps)
-        self._touched = False
+        outcomes = tuple(self._safe_step(step) for step in self._steps_in_order())
         self._dark_before_all = False
-        return SafeState(self.stamper.stamp(), all(outcome.confirmed for outcome in outcomes), outcomes)
+        confirmed = all(outcome.confirmed for outcome in outcomes)
+        self._touched = self._touched and not confirmed  # closing tries again what is not confirmed
+        self._attenuator_trusted = self._attenuator_trusted or confirmed
+        return SafeState(self.stamper.stamp(), confirmed, outcomes)
+
+    def _steps_in_order(self) -> list[SafeStep]:
+        attenuator = self._instruments.get("attenuator")
+        proven = self._attenuator_trusted and self.light.attenuation_db is not None
+        if attenuator is None or (attenuator.link.healthy and proven):
+            return list(self._steps)
+        return sorted(self._steps, key=lambda step: step.role == "attenuator")
 
     def _safe_step(self, step: SafeStep) -> SafeStepOutcome:
         """Half the time over the link in use, then half over a fresh one."""

@@ -12,6 +12,7 @@ from owlight.errors import BenchError, InstrumentError
 from owlight.instrument.light_keeper import ATTENUATION, SIGNAL_OUTPUT, SIGNAL_POWER
 from owlight.instrument.lighting import METER, wait_averaged
 from owlight.quantity import dbm, watts, words
+from owlight.vocabulary.values import Applied
 
 if TYPE_CHECKING:
     from owlight.instrument.open_bench import OpenBench
@@ -34,7 +35,7 @@ class ReceivedPowerSet:
 def set_received_power(bench: OpenBench, received_dbm: float) -> ReceivedPowerSet:
     """Steer by the paper, look at the tap a full averaging window later, correct at most once."""
     signal_dbm = _signal_dbm(bench)
-    _still_there(bench)
+    still_there(bench)
     commanded_db = _within(bench, attenuation_for(bench.paper, received_dbm, signal_dbm), received_dbm)
     tap_w = _move(bench, commanded_db, signal_dbm)
     if tap_w is None:  # nothing moved
@@ -47,22 +48,45 @@ def set_received_power(bench: OpenBench, received_dbm: float) -> ReceivedPowerSe
     return ReceivedPowerSet(commanded_db, _attenuation_db(bench))
 
 
+def approach(bench: OpenBench, attenuation_db: float, point: int | None = None) -> Applied:
+    """A bare attenuation that lets more light through: the same small steps, the same looks at the tap."""
+    bench.judge(ATTENUATION, attenuation_db, point)  # the end of the way, before its first step
+    if bench.light.attenuation_db is None:
+        bench.set_at_once(ATTENUATION, bench.paper.light_path.attenuator_maximum_db)
+    still_there(bench)
+    signal_dbm = _signal_dbm(bench)
+    return _climb(bench, _attenuation_db(bench), attenuation_db, signal_dbm, point)[0]
+
+
+def close_attenuator(bench: OpenBench) -> None:
+    """At its maximum and read back there, before a source gives more."""
+    if not bench.knows(ATTENUATION):
+        return
+    if bench.light.attenuation_db is not None and bench.light.signal_on is not False:
+        still_there(bench)
+    maximum_db = bench.paper.light_path.attenuator_maximum_db
+    found_db = bench.read_setting(ATTENUATION)
+    if not isinstance(found_db, float) or found_db < maximum_db - bench.tolerance_of(ATTENUATION) - 1e-9:
+        bench.set_at_once(ATTENUATION, maximum_db)
+
+
 def _signal_dbm(bench: OpenBench) -> float:
     on, power_dbm = bench.read_setting(SIGNAL_OUTPUT), bench.read_setting(SIGNAL_POWER)
     if on is not True or not isinstance(power_dbm, float):
         raise BenchError(
-            "The signal laser does not confirm that it is on at a known power, so no received power can be set. "
-            "Nothing was moved; light up first."
+            "The signal laser does not confirm that it is on at a known power, so nothing can be expected at the "
+            "tap. Nothing was moved; light up first."
         )
     return power_dbm
 
 
-def _still_there(bench: OpenBench) -> None:
+def still_there(bench: OpenBench) -> None:
     """An attenuator that lost its power may stand open: believe the read-back, and stop where it contradicts."""
     believed_db = bench.light.attenuation_db
     found_db = bench.read_setting(ATTENUATION)
     tolerance_db = bench.tolerance_of(ATTENUATION)
     if believed_db is None or not isinstance(found_db, float) or abs(found_db - believed_db) > tolerance_db + 1e-9:
+        bench.distrust_attenuator()
         raise InstrumentError(
             f"The attenuator reads back {found_db} dB where it was left at {believed_db} dB. "
             "The bench is made safe; look whether it lost its power or somebody touched it.",
@@ -82,7 +106,7 @@ def _within(bench: OpenBench, attenuation_db: float, received_dbm: float) -> flo
 
 def _attenuation_db(bench: OpenBench) -> float:
     found = bench.light.attenuation_db
-    assert found is not None  # set() and _still_there() have just proven it
+    assert found is not None  # set_at_once() and still_there() have just proven it
     return found
 
 
@@ -93,16 +117,21 @@ def _move(bench: OpenBench, target_db: float, signal_dbm: float) -> float | None
         return None
     if target_db > start_db:
         start_db = min(target_db + _FROM_THE_DARK_DB, bench.paper.light_path.attenuator_maximum_db)
-        bench.set(ATTENUATION, start_db)
+        bench.set_at_once(ATTENUATION, start_db)
         if start_db == target_db:
             return _look(bench, signal_dbm)
+    return _climb(bench, start_db, target_db, signal_dbm)[1]
+
+
+def _climb(
+    bench: OpenBench, start_db: float, target_db: float, signal_dbm: float, point: int | None = None
+) -> tuple[Applied, float]:
+    """Towards light, with the tap's reading after the last step."""
     steps = max(1, math.ceil((start_db - target_db) / LARGEST_STEP_DB - 1e-9))
-    tap_w = None
-    for number in range(1, steps + 1):
-        share = number / steps
-        bench.set(ATTENUATION, target_db if number == steps else round(start_db + share * (target_db - start_db), 3))
-        tap_w = _look(bench, signal_dbm)
-    return tap_w
+    for number in range(1, steps):
+        bench.set_at_once(ATTENUATION, round(start_db + number / steps * (target_db - start_db), 3), point)
+        _look(bench, signal_dbm)
+    return bench.set_at_once(ATTENUATION, target_db, point), _look(bench, signal_dbm)
 
 
 def _look(bench: OpenBench, signal_dbm: float) -> float:

@@ -1,7 +1,7 @@
 """A sequence expanded against a bench: points, order, limits, forecast, and what to measure next. Pure."""
 
 from owlight.plan.forecast import Forecast, ForecastStay, forecast
-from owlight.plan.limits import light_state, longest_unattended_s
+from owlight.plan.limits import light_at_start, light_state, longest_unattended_s
 from owlight.plan.make import PlanRequest, make_plan
 from owlight.plan.next_attempt import LAG, capped, next_attempt
 from owlight.plan.safe_steps import safe_steps
@@ -14,6 +14,7 @@ __all__ = [
     "PlanRequest",
     "capped",
     "forecast",
+    "light_at_start",
     "light_state",
     "longest_unattended_s",
     "make_plan",

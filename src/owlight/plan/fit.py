@@ -7,7 +7,7 @@ from collections.abc import Iterator, Mapping
 from owlight.bench import Bench, attenuation_for, lo_laser_power_dbm, lowest_received_power_dbm
 from owlight.driver import Driver
 from owlight.errors import Problem
-from owlight.plan.limits import ATTENUATION, LO_LASER_POWER, SIGNAL_POWER
+from owlight.plan.limits import ATTENUATION, LO_LASER_POWER, SIGNAL_OUTPUT, SIGNAL_POWER
 from owlight.quantity import words
 from owlight.sequence import Sequence
 from owlight.vocabulary.plan import Point
@@ -19,6 +19,8 @@ _BEHIND = {
     RECEIVED_POWER: ("signal_laser", "attenuator", "power_meter"),
     LO_POWER: ("local_oscillator",),
 }
+_OF_ATTENUATOR = {ATTENUATION, RECEIVED_POWER}
+_SAME_WAVELENGTH_NM = 1e-6
 Found = Iterator[tuple[str, str]]
 
 
@@ -38,6 +40,9 @@ def misfits(
         *_reach(bench, sequence, points),
         *_planes(bench, sequence),
         *_calibration(bench, asked),
+        *_wavelengths(sequence, points),
+        *_unlit(sequence, points),
+        *_left_behind(sequence),
     ]
     return tuple(Problem(sequence.name, None, key, said) for key, said in dict.fromkeys(found))
 
@@ -104,7 +109,9 @@ def _reach(bench: Bench, sequence: Sequence, points: tuple[Point, ...]) -> Found
     lowest_dbm = lowest_received_power_dbm(bench)
     maximum_db = bench.light_path.attenuator_maximum_db
     for point in points:
-        received, signal = point.value(RECEIVED_POWER), point.value(SIGNAL_POWER) or fixed.get(SIGNAL_POWER)
+        received, signal = point.value(RECEIVED_POWER), point.value(SIGNAL_POWER)
+        if signal is None:  # 0 dBm is a power like any other
+            signal = fixed.get(SIGNAL_POWER)
         if received is None or signal is None:
             continue
         attenuation_db = attenuation_for(bench, float(received), float(signal))
@@ -131,3 +138,36 @@ def _calibration(bench: Bench, asked: tuple[Setting, ...]) -> Found:
         if setting.term == _WAVELENGTH and abs(float(setting.value) - record.wavelength_nm) > record.wavelength_span_nm:
             span = f"{words(record.wavelength_nm, 'nm')} within {words(record.wavelength_span_nm, 'nm')}"
             yield str(_WAVELENGTH), f"{words(float(setting.value), 'nm')} is outside the calibration, {span}"
+
+
+def _wavelengths(sequence: Sequence, points: tuple[Point, ...]) -> Found:
+    """Meter and attenuator follow the signal in one dark action, so they cannot stand at another wavelength."""
+    for point in points:
+        values = {each.term: each.value for each in (*sequence.settings, *point.settings)}
+        signal = values.get(_WAVELENGTH)
+        for role in ("power_meter", "attenuator"):
+            own = values.get(Term(role, "wavelength"))
+            if own is not None and signal is not None and abs(float(own) - float(signal)) > _SAME_WAVELENGTH_NM:
+                said = f"{words(float(own), 'nm')} contradicts {_WAVELENGTH}, {words(float(signal), 'nm')}"
+                yield f"{role}.wavelength", f"{said}: it is set with the signal's; leave it out"
+
+
+def _unlit(sequence: Sequence, points: tuple[Point, ...]) -> Found:
+    first = points[0].settings if points else ()
+    stays = [point.settings for point in points] + [(*first, *condition.at) for condition in sequence.conditions]
+    for settings in stays:
+        values = {each.term: each.value for each in (*sequence.settings, *settings)}
+        if RECEIVED_POWER in values and values.get(SIGNAL_OUTPUT) is False:
+            yield str(SIGNAL_OUTPUT), f"is off where {RECEIVED_POWER} is asked for; leave out the one or the other"
+
+
+def _left_behind(sequence: Sequence) -> Found:
+    """What a condition sets must be set again by somebody, or every stay would be measured with it unsaid."""
+    named = {each.term for each in sequence.settings} | {axis.term for axis in sequence.axes}
+    if named & _OF_ATTENUATOR:
+        named |= _OF_ATTENUATOR
+    for condition in sequence.conditions:
+        for each in condition.at:
+            if each.term not in named:
+                said = "is set for a condition but neither in [settings] nor swept, so nothing would set it back"
+                yield str(each.term), said

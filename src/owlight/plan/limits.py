@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Iterator
+from collections.abc import Sequence as Listing
+from dataclasses import replace
 
 from owlight.bench import (
     Bench,
@@ -16,7 +18,7 @@ from owlight.bench import (
 )
 from owlight.errors import SafetyRefusal
 from owlight.sequence import Sequence
-from owlight.vocabulary.plan import PlanePower, Point
+from owlight.vocabulary.plan import Condition, PlanePower, Point
 from owlight.vocabulary.terms import LO_POWER, RECEIVED_POWER
 from owlight.vocabulary.values import Setting, Term, Value
 
@@ -37,10 +39,27 @@ def light_state(bench: Bench, settings: Iterable[Setting]) -> LightState:
     if RECEIVED_POWER in values and signal_dbm is not None:
         attenuation_db = attenuation_for(bench, float(values[RECEIVED_POWER]), signal_dbm)
     if attenuation_db is None:
-        attenuation_db = bench.light_path.attenuator_maximum_db  # where the bench puts it before any light
+        attenuation_db = _closed_db(bench)
     signal_on = values.get(SIGNAL_OUTPUT, SIGNAL_POWER in values or RECEIVED_POWER in values)
     lo_on = values.get(LO_OUTPUT, LO_LASER_POWER in values or LO_POWER in values)
     return LightState(bool(signal_on), signal_dbm, bool(lo_on), lo_dbm, attenuation_db)
+
+
+def light_at_start(
+    bench: Bench, settings: Iterable[Setting], points: Listing[Point], conditions: Iterable[Condition]
+) -> LightState:
+    """What is lit once, behind the attenuator's maximum, before any condition and stay: only what something asks for.
+
+    The powers are those of the settings, else of the first point; an output that is named there decides for itself.
+    """
+    at = (setting for condition in conditions for setting in condition.at)
+    swept = (setting for point in reversed(points) for setting in point.settings)  # of a term the last one counts
+    return replace(light_state(bench, (*at, *settings, *swept)), attenuation_db=_closed_db(bench))
+
+
+def _closed_db(bench: Bench) -> float | None:
+    """Where the bench puts its attenuator before any light; a bench without one has nothing to count on."""
+    return bench.light_path.attenuator_maximum_db if "attenuator" in bench.role else None
 
 
 def _number(values: dict[Term, Value], term: Term) -> float | None:
@@ -50,11 +69,14 @@ def _number(values: dict[Term, Value], term: Term) -> float | None:
 def light_states(
     bench: Bench, sequence: Sequence, points: tuple[Point, ...]
 ) -> Iterator[tuple[LightState, int | None]]:
-    """Of each point, then of each waiting condition."""
+    """Of each point, of the start, then of each waiting condition with what the ones before it left set."""
     for point in points:
         yield light_state(bench, (*sequence.settings, *point.settings)), point.index
+    yield light_at_start(bench, sequence.settings, points, sequence.conditions), None
+    asked = [*sequence.settings, *_first_values(sequence)]
     for condition in sequence.conditions:
-        yield light_state(bench, (*sequence.settings, *_first_values(sequence), *condition.at)), None
+        asked += condition.at
+        yield light_state(bench, asked), None
 
 
 def _first_values(sequence: Sequence) -> list[Setting]:

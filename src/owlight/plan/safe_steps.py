@@ -12,6 +12,9 @@ from owlight.vocabulary.plan import SafeStep
 from owlight.vocabulary.terms import TERMS
 from owlight.vocabulary.values import Setting, Value
 
+_SHOWN = ("condition", "stable")
+"""By a register that is asked, or by a read-back that tells where it is and not where it was sent."""
+
 
 def safe_steps(bench: Bench, drivers: Mapping[str, Driver], resources: Mapping[str, str]) -> tuple[SafeStep, ...]:
     """In the bench's safe order; no step waits for another's success."""
@@ -20,6 +23,7 @@ def safe_steps(bench: Bench, drivers: Mapping[str, Driver], resources: Mapping[s
 
 def _step(bench: Bench, driver: Driver, resource: str, setting: Setting) -> SafeStep:
     term = setting.term
+    settled = driver.setting[term.name].settled
     return SafeStep(
         role=term.role,
         resource=resource,
@@ -28,7 +32,9 @@ def _step(bench: Bench, driver: Driver, resource: str, setting: Setting) -> Safe
         query=query(driver, term),
         expected=spoken_setting(driver, setting),
         tolerance=None if isinstance(setting.value, bool | str) else spoken_tolerance(driver, term, setting.value),
-        words=_words(setting),
+        words=_words(setting) + ("" if settled.by in _SHOWN else "; nothing shows when it has settled"),
+        settled_query=settled.query if settled.by == "condition" else "",
+        settled_bit=settled.bit,
     )
 
 

@@ -3,6 +3,15 @@
 from __future__ import annotations
 
 from owlight.errors import BenchError
+from owlight.plan import light_at_start
+from owlight.run.apply import (
+    ATTENUATION,
+    LO_WAVELENGTH,
+    SIGNAL_WAVELENGTH,
+    apply_settings,
+    number,
+    of_attenuator,
+)
 from owlight.run.night import Night
 from owlight.statistics.drift import slope
 from owlight.vocabulary.events import Note
@@ -12,7 +21,8 @@ from owlight.vocabulary.terms import LO_POWER, RECEIVED_POWER
 from owlight.vocabulary.values import Reading, Setting, Term, Value
 
 _LASERS = ("signal_laser", "local_oscillator")
-_OF_LIGHT_UP = {LO_POWER, *(Term(role, name) for role in _LASERS for name in ("output", "power"))}
+_OF_LASERS = {Term(role, name) for role in _LASERS for name in ("output", "power", "wavelength")}
+_WITH_LIGHT = {LO_POWER, RECEIVED_POWER, ATTENUATION, *_OF_LASERS}
 _LEAST_READINGS = 8
 _MOST_READINGS = 60
 
@@ -23,28 +33,37 @@ def prepare(night: Night) -> None:
     night.announce(seed_for(plan.seed, "prepare"), 0.0)
     for setting in dark_settings(plan):
         night.bench.set(setting.term, setting.value)
-    wavelength = _first(plan, Term("signal_laser", "wavelength"))
-    if wavelength is not None:
-        night.bench.set_wavelength(float(wavelength))
-    lo_wavelength = _first(plan, Term("local_oscillator", "wavelength"))
-    if lo_wavelength is not None and lo_wavelength != wavelength:
-        night.bench.set(Term("local_oscillator", "wavelength"), lo_wavelength)
+    signal_nm, lo_nm = (number(_first(plan, term)) for term in (SIGNAL_WAVELENGTH, LO_WAVELENGTH))
+    if signal_nm is not None or lo_nm is not None:
+        night.bench.set_wavelength(signal_nm, lo_nm)
     if "power_meter" in night.bench.roles:
         night.bench.zero_meter()
-    lo_laser_power = _first(plan, Term("local_oscillator", "power"))
-    if lo_laser_power is not None:
-        night.bench.set(Term("local_oscillator", "power"), lo_laser_power)
     if night.stop.level:  # whoever asked for an end before the light came on gets none
         return
-    lo_power, signal_power = _first(plan, LO_POWER), _first(plan, Term("signal_laser", "power"))
-    night.bench.light_up(_number(lo_power), _number(signal_power))
+    night.bench.light_up(light_at_start(night.bench.paper, plan.settings, plan.points, plan.conditions))
+    apply_settings(night, of_attenuator(plan))
     for condition in plan.conditions:
         wait_until(night, condition)
+    if night.stop.level:
+        return
+    _set_back(night)
+    for setting in plan.settings:
+        if setting.term != RECEIVED_POWER:  # steered by the tap, no setting of an instrument
+            night.bench.confirm(setting)
+
+
+def _set_back(night: Night) -> None:
+    """What [settings] says, where a condition was waited for with something else."""
+    changed = {setting.term for condition in night.plan.conditions for setting in condition.at}
+    if not changed:
+        return
+    fixed = (setting for setting in night.plan.settings if setting.term in changed)
+    apply_settings(night, (*of_attenuator(night.plan), *fixed))
 
 
 def dark_settings(plan: Plan) -> tuple[Setting, ...]:
-    """What is set before any light: all but the lasers' powers and outputs; wavelength is an action of its own."""
-    return tuple(s for s in plan.settings if s.term not in _OF_LIGHT_UP and s.term.name != "wavelength")
+    """What is set before any light: all but the lasers' settings, which are actions of their own, and attenuation."""
+    return tuple(s for s in plan.settings if s.term not in _WITH_LIGHT)
 
 
 def _first(plan: Plan, term: Term) -> Value | None:
@@ -55,17 +74,12 @@ def _first(plan: Plan, term: Term) -> Value | None:
     return plan.points[0].value(term) if plan.points else None
 
 
-def _number(value: Value | None) -> float | None:
-    return None if value is None else float(value)
-
-
 def wait_until(night: Night, condition: Condition) -> None:
     """Wait at the stated settings until the reading is steady; the measured slope is noted, a time-out fails.
 
     A person who asks to stop is not kept waiting: there is no point in hand yet.
     """
-    for setting in condition.at:
-        _apply(night, setting)
+    apply_settings(night, (*of_attenuator(night.plan), *condition.at))
     every_s = condition.over_s / _LEAST_READINGS
     began_s = night.clock.monotonic_s()
     readings: list[Reading] = []
@@ -86,10 +100,3 @@ def wait_until(night: Night, condition: Condition) -> None:
         f"{condition.reading} did not become steady within {condition.at_most_s:g} s; the bench is made safe. "
         "Look at the warm-up readings in the logbook, then allow more time or mend the drift."
     )
-
-
-def _apply(night: Night, setting: Setting) -> None:
-    if setting.term == RECEIVED_POWER:
-        night.bench.set_received_power(float(setting.value))
-    else:
-        night.bench.set(setting.term, setting.value)

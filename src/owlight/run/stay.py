@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 from owlight.bench import received_power_dbm
 from owlight.capture import check_capture
+from owlight.run.apply import apply_settings, of_attenuator
 from owlight.run.judge import judge_stay, wanted_power_dbm
 from owlight.run.night import Night
 from owlight.run.vertical import set_vertical
@@ -15,7 +16,7 @@ from owlight.vocabulary.captures import CaptureId, Demodulation
 from owlight.vocabulary.events import AttemptFinished, Check, ReceivedPower
 from owlight.vocabulary.plan import Attempt
 from owlight.vocabulary.seeds import seed_for
-from owlight.vocabulary.terms import LO_POWER, RECEIVED_POWER
+from owlight.vocabulary.terms import RECEIVED_POWER
 from owlight.vocabulary.values import Reading, Stamp, Term
 
 METER = Term("power_meter", "power")
@@ -83,7 +84,9 @@ def stay_at(night: Night, stay: Stay) -> None:
     attempt = stay.attempt
     seed = seed_for(night.plan.seed, "stay", attempt.point.index, attempt.number)
     night.announce(seed, attempt.planned_time_s)
-    _apply_outer_settings(night, attempt)
+    # the received power of the point comes last, after the vertical range was found
+    outer = (setting for setting in attempt.point.settings if setting.term != RECEIVED_POWER)
+    apply_settings(night, (*of_attenuator(night.plan), *outer))
     set_vertical(night, attempt)
     night.announce(seed, attempt.planned_time_s)
     requested_dbm = wanted_power_dbm(attempt)
@@ -110,18 +113,6 @@ def stay_at(night: Night, stay: Stay) -> None:
     if stay.received_power is not None:
         stay.received_power = _measured(night, stay.received_power, before, after)
     stay.seconds = night.clock.monotonic_s() - stay.started.monotonic_s
-
-
-def _apply_outer_settings(night: Night, attempt: Attempt) -> None:
-    for setting in attempt.point.settings:
-        if setting.term == RECEIVED_POWER:
-            continue
-        if setting.term == LO_POWER:
-            night.bench.set_lo_power(float(setting.value))
-        elif setting.term == Term("signal_laser", "wavelength"):
-            night.bench.set_wavelength(float(setting.value))
-        else:
-            night.bench.set(setting.term, setting.value)
 
 
 def _read_all(night: Night, stay: Stay, phase: str) -> Reading | None:

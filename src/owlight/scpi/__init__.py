@@ -2,7 +2,7 @@
 
 from owlight.scpi.blocks import BlockError, block_length
 from owlight.scpi.errors import ErrorEntry, hint
-from owlight.scpi.identity import IdentityText
+from owlight.scpi.identity import IdentityText, may_be, tells_serial
 from owlight.scpi.words import matches, parse_boolean, parse_number, parse_string, short_form, split, write_number
 
 __all__ = [
@@ -12,10 +12,12 @@ __all__ = [
     "block_length",
     "hint",
     "matches",
+    "may_be",
     "parse_boolean",
     "parse_number",
     "parse_string",
     "short_form",
     "split",
+    "tells_serial",
     "write_number",
 ]

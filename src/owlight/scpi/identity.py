@@ -25,3 +25,17 @@ class IdentityText:
         if len(fields) < 4:
             raise ValueError(f"{text!r} is not an identity of four fields")
         return IdentityText(*fields)
+
+
+def tells_serial(serial_number: str) -> bool:
+    """Whether an identity names its instrument: an empty field or "0" names none.
+
+    >>> tells_serial("OWL-SL-0001"), tells_serial("0"), tells_serial("")
+    (True, False, False)
+    """
+    return serial_number not in ("", "0")
+
+
+def may_be(found: str, expected: str) -> bool:
+    """The one rule for all who prove an instrument: what tells no serial number, or none is expected, may be it."""
+    return not expected or not tells_serial(found) or found == expected

@@ -123,7 +123,10 @@ class PlanePower:
 
 @dataclass(frozen=True)
 class SafeStep:
-    """One step towards the safe state, executable without any file: what the guard is given."""
+    """One step towards the safe state, executable without any file: what the guard is given.
+
+    `settled_query` asks the register whose `settled_bit` falls once the change is over; empty where nothing shows it.
+    """
 
     role: str
     resource: str
@@ -133,6 +136,8 @@ class SafeStep:
     expected: Value
     tolerance: float | None
     words: str = ""
+    settled_query: str = ""
+    settled_bit: int = 0
 
 
 @dataclass(frozen=True)
