@@ -165,7 +165,7 @@ def words(value: float, unit: str, digits: int = 6) -> str:
 
 
 def scattered(value: float, deviation: float, unit: str) -> str:
-    """Value and standard deviation in one prefix, both to the deviation's second digit (JCGM 100, 7.2.6) or to whole units.
+    """Value and standard deviation in one prefix, to the deviation's second digit (JCGM 100, 7.2.6) or whole units.
 
     >>> scattered(1.23614e-5, 3.37e-9, "W"), scattered(-2.6e-10, 6.22e-7, "A"), scattered(10.0, 0.0, "dBm")
     ('12.3614 ± 0.0034 µW', '0 ± 622 nA', '10 ± 0 dBm')
