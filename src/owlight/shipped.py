@@ -22,13 +22,22 @@ def _shipped(kind: str) -> Path:
     return _PACKED / kind if (_PACKED / kind).is_dir() else _CHECKOUT / kind
 
 
-def names(kind: str) -> tuple[str, ...]:
-    """The shipped names of a kind, without `.toml`."""
-    return tuple(sorted(path.stem for path in _shipped(kind).glob("*.toml")))
+def names(kind: str, what: str = "") -> tuple[str, ...]:
+    """The shipped names of a kind, without `.toml`; in a folder of several kinds those whose first key is `what`."""
+    files = sorted(_shipped(kind).glob("*.toml"))
+    return tuple(path.stem for path in files if not what or _first_key(path) == what)
 
 
-def find(kind: str, name: str, near: Path | None = None) -> Path:
-    """The file called `name` (with or without `.toml`, or a path), as seen from the file `near` that names it."""
+def _first_key(path: Path) -> str:
+    lines = path.read_text("utf-8").splitlines()
+    return next((line.partition("=")[0].strip() for line in lines if line and not line.startswith("#")), "")
+
+
+def find(kind: str, name: str, near: Path | None = None, what: str = "") -> Path:
+    """The file called `name` (with or without `.toml`, or a path), as seen from the file `near` that names it.
+
+    `what` it should be, a bench for instance, matters only for the words of the InputError.
+    """
     base = near.parent if near is not None else Path.cwd()
     spelled = (name, f"{name}.toml") if not name.endswith(".toml") else (name,)
     places = (base, Path.cwd(), base / kind, base.parent / kind, _shipped(kind))
@@ -36,10 +45,13 @@ def find(kind: str, name: str, near: Path | None = None) -> Path:
         for file in spelled:
             if (place / file).is_file():
                 return (place / file).resolve()
-    close = difflib.get_close_matches(Path(name).stem, names(kind), n=1)
-    hint = f" Did you mean {close[0]}?" if close else ""
-    known = ", ".join(names(kind)) or "none"
-    raise InputError(f"There is no file {name!r} among {kind}: neither as a path, nor shipped ({known}).{hint}")
+    shipped = names(kind, what)
+    close = difflib.get_close_matches(Path(name).stem, shipped, n=1)
+    hint = f"Did you mean {close[0]}?" if close else "Give a path, or one of these names."
+    known = ", ".join(shipped) or "none"
+    raise InputError(
+        f"There is no {what or kind[:-1]} {name!r}: neither as a path, nor shipped, which are: {known}. {hint}"
+    )
 
 
 def user_cache() -> Path:

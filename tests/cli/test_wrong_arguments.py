@@ -67,12 +67,12 @@ def test_no_option_lifts_a_limit(owlight: Any, unopened: None, option: str) -> N
 @pytest.mark.parametrize(
     ("arguments", "words"),
     [
-        (("forecast", "nosuch", "--bench", "bench"), "nosuch"),
-        (("forecast", "qpsk_sensitivity", "--bench", "nosuch"), "nosuch"),
+        (("forecast", "nosuch", "--bench", "bench"), "SEQUENCE: There is no sequence 'nosuch'"),
+        (("forecast", "qpsk_sensitivity", "--bench", "nosuch"), "--bench: There is no bench 'nosuch'"),
         (("run", "qpsk_sensitivity"), "--bench"),
         (("safe", "--bench", "nosuch"), "nosuch"),
         (("identify", "--bench", "nosuch", "--json"), "nosuch"),
-        (("simulate", "nosuch"), "nosuch"),
+        (("simulate", "nosuch"), "BENCH: There is no bench 'nosuch'"),
         (("show", "last", "--logbook", "nowhere"), "no logbook in nowhere"),
         (("logbook", "--logbook", "nowhere"), "no logbook in nowhere"),
         (("report", "last", "--logbook", "nowhere"), "no logbook in nowhere"),

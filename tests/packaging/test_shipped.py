@@ -48,6 +48,14 @@ def test_path_from_the_current_folder(tmp_path: Path, monkeypatch: pytest.Monkey
     assert shipped.find("sequences", "deep/own.toml") == (tmp_path / "deep" / "own.toml").resolve()
 
 
+def test_only_the_wanted_kind_is_offered() -> None:
+    """Benches lie beside worlds and instruments; each file names its kind in its first key."""
+    assert shipped.names("simulated_instruments", "bench") == ("bench",)
+    assert shipped.names("simulated_instruments", "world") == ("world",)
+    with pytest.raises(InputError, match=r"no bench 'nosuch': neither as a path, nor shipped, which are: bench\. "):
+        shipped.find("simulated_instruments", "nosuch", what="bench")
+
+
 def test_near_name_is_offered() -> None:
     with pytest.raises(InputError, match="Did you mean generic_laser"):
         shipped.find("drivers", "generic_lasr")

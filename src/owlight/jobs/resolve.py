@@ -33,18 +33,19 @@ def source_of(kind: str, name: str, text: str) -> Source:
 
 
 class _Reading:
-    """Collects sources and problems while files lead to further files."""
+    """Collects sources and problems while files lead to further files; `named_by` are arguments that name the first."""
 
-    def __init__(self) -> None:
+    def __init__(self, named_by: dict[str, str]) -> None:
+        self.named_by = named_by
         self.sources: dict[tuple[str, str], Source] = {}
         self.problems: list[Problem] = []
 
     def text(self, kind: str, folder: str, name: str, near: Path | None) -> tuple[str, Path] | None:
         try:
-            path = shipped.find(folder, name, near)
+            path = shipped.find(folder, name, near, kind)
             text = path.read_text("utf-8")
         except InputError as trouble:
-            self.problems += trouble.problems or (Problem(name, None, "", trouble.words),)
+            self.problems += trouble.problems or (Problem(self.named_by.get(kind, name), None, "", trouble.words),)
             return None
         except (OSError, UnicodeDecodeError) as trouble:
             self.problems.append(Problem(name, None, "", f"cannot be read as UTF-8 text ({trouble})"))
@@ -53,9 +54,11 @@ class _Reading:
         return text, path
 
 
-def resolve(sequence_name: str | None, bench_name: str, cwd: Path | None = None) -> Resolved:
+def resolve(
+    sequence_name: str | None, bench_name: str, cwd: Path | None = None, bench_argument: str = "--bench"
+) -> Resolved:
     """Read sequence, bench, drivers and a simulated bench's world and instruments; InputError names every mistake."""
-    reading = _Reading()
+    reading = _Reading({"sequence": "SEQUENCE", "bench": bench_argument})
     near = (cwd or Path.cwd()) / "here"
     sequence = None
     if sequence_name is not None and (found := reading.text("sequence", "sequences", sequence_name, near)):

@@ -12,7 +12,7 @@ from owlight.jobs.resolve import resolve, world_path
 
 def serve(bench_name: str, say: Callable[[dict[str, dict[str, str]]], None]) -> None:
     """Returns after Ctrl-C or SIGTERM."""
-    resolved = resolve(None, bench_name)
+    resolved = resolve(None, bench_name, bench_argument="BENCH")
     running = simulation.start(world_path(bench_name, resolved.bench), stepped=False)
     stopped = threading.Event()
     for number in (signal.SIGINT, signal.SIGTERM):
