@@ -31,7 +31,10 @@ def test_point_over_limit_is_refused_by_name(plan_of: PlanOf) -> None:
     # 46 dB in steps of 0.5 dB: the last is point 92. On the 6 dBm come 0.5 dB tolerance of the laser, 2 dB less loss
     # of the transmitter, 0.5 dB less insertion loss, 0.5 dB less loss after the tap; no attenuation is left to be wrong
     words = str(caught.value)
-    assert "Point 92" in words
+    assert "Point 92 (received_power 6 dBm): " in words
+    # 10 dBm of laser less 23.6 dB of loss leave -13.6 dBm with the attenuator at its least
+    assert "attenuator at 0.00 dB and 19.60 dB more light asked for than it would pass" in words
+    assert "at -" not in words
     assert "the receiver signal input could see 9.50 dBm, above its limit of 3.00 dBm" in words
 
 
@@ -48,8 +51,8 @@ def test_condition_is_judged_like_a_point(plan_of: PlanOf) -> None:
 @pytest.mark.parametrize(
     ("changes", "bench", "words"),
     [
-        ({TO: 'to = "-13 dBm"'}, {}, "the attenuator cannot give; it reaches -73.60 to -13.60 dBm"),
-        ({}, {'floor = "-75 dBm"': 'floor = "-40 dBm"'}, "point 0 asks for -40 dBm, which the tap cannot measure"),
+        ({TO: 'to = "-13 dBm"'}, {}, "ask for -13.5 dBm to -13 dBm; the attenuator reaches -73.60 to -13.60 dBm"),
+        ({}, {'floor = "-75 dBm"': 'floor = "-40 dBm"'}, "point 0 asks for -40 dBm; the tap measures from -39.54 dBm"),
         ({'"signal_laser.wavelength" = "1550.12 nm"': '"signal_laser.wavelength" = "1560 nm"'}, {},
          "1560 nm is outside the calibration, 1550.12 nm within 5 nm"),
         ({'"signal_laser.power" = "10 dBm"': '"signal_laser.power" = "14 dBm"'}, {},
@@ -61,6 +64,25 @@ def test_misfit_is_an_input_error(plan_of: PlanOf, changes: dict[str, str], benc
     with pytest.raises(InputError) as caught:
         plan_of("qpsk_sensitivity", changes, bench)
     assert words in str(caught.value)
+
+
+def test_sweep_out_of_range_is_one_line(plan_of: PlanOf) -> None:
+    """However many points are wrong: which, what they ask for, and what is possible."""
+    sweep = '[[sweep]]\nsetting = "signal_laser.wavelength"\nfrom = "1556 nm"\nto = "1560 nm"\nstep = "1 nm"\n\n'
+    changes = {"[[sweep]]": sweep + "[[sweep]]", '"signal_laser.wavelength" = "1550.12 nm"': ""}
+    changes["every = 9"] = 'every = 9\n"signal_laser.wavelength" = "1556 nm"'
+    with pytest.raises(InputError) as caught:
+        plan_of("qpsk_sensitivity", changes)
+    (wavelength,) = caught.value.problems
+    assert wavelength.key == "signal_laser.wavelength"
+    assert wavelength.words.startswith("5 values from 1556 nm to 1560 nm are outside the calibration")
+    with pytest.raises(InputError) as caught:
+        plan_of("qpsk_sensitivity", {'from = "-40 dBm"': 'from = "-90 dBm"'})
+    attenuator, tap = caught.value.problems
+    assert attenuator.key == tap.key == "sweep[1]"
+    # in steps of 0.5 dB point 32 is at -74 dBm, the last below what 60 dB of attenuation leave
+    assert attenuator.words == "points 0 to 32 ask for -90 dBm to -74 dBm; the attenuator reaches -73.60 to -13.60 dBm"
+    assert tap.words.endswith("ten times the meter's floor")
 
 
 def test_highest_powers_show_open_attenuator(plan_of: PlanOf) -> None:
@@ -167,7 +189,7 @@ def test_zero_dbm_is_a_power(plan_of: PlanOf) -> None:
     }
     # 0 dBm less 12, 1.5 and 10.1 dB is -23.6 dBm, so -23 and -22 dBm are out of reach for it
     with pytest.raises(
-        InputError, match=r"point 17 asks for -23 dBm, which the attenuator cannot give.* to -23\.60 dBm"
+        InputError, match=r"points 17 to 18 ask for -23 dBm to -22 dBm; the attenuator reaches .* to -23\.60 dBm"
     ):
         plan_of("lo_power_map", swept)
 

@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Iterable
 from dataclasses import dataclass, replace
 
 from owlight.bench.model import LO_INPUT, METER, PHOTODIODE, SIGNAL_INPUT, Bench
 from owlight.errors import SafetyRefusal
-from owlight.quantity import dbm, watts
+from owlight.quantity import dbm, watts, words
 from owlight.vocabulary.plan import PlanePower
+from owlight.vocabulary.terms import TERMS
 from owlight.vocabulary.values import Setting, Term
 
 _HYBRID_OUTPUTS = 4
@@ -31,7 +33,7 @@ def worst_case(bench: Bench, state: LightState, point: int | None = None) -> tup
     """The highest power at each plane light could reach: upper tolerance of the sources, least loss of the path."""
     powers_dbm = _powers_dbm(bench, state)
     return tuple(
-        PlanePower(plane, _situation(state), power_dbm, bench.limit[plane].highest_dbm, point)
+        PlanePower(plane, _situation(bench, state), power_dbm, bench.limit[plane].highest_dbm, point)
         for plane, power_dbm in powers_dbm.items()
     )
 
@@ -79,12 +81,19 @@ def _diode_dbm(bench: Bench, signal_dbm: float | None, lo_dbm: float | None) -> 
     return dbm((math.sqrt(signal_w) + math.sqrt(lo_w)) ** 2)
 
 
-def _situation(state: LightState) -> str:
+def _situation(bench: Bench, state: LightState) -> str:
     signal = _source_words("signal", state.signal_on, state.signal_power_dbm)
     lo = _source_words("local oscillator", state.lo_on, state.lo_power_dbm)
-    unknown = state.attenuation_db is None
-    attenuator = "attenuator unknown, taken as 0 dB" if unknown else f"attenuator at {state.attenuation_db:.2f} dB"
-    return f"{signal}, {lo}, {attenuator}"
+    return f"{signal}, {lo}, {_attenuator_words(state.attenuation_db, bench.light_path.attenuator_maximum_db)}"
+
+
+def _attenuator_words(attenuation_db: float | None, maximum_db: float) -> str:
+    """No attenuator goes below 0 dB nor beyond its end, whatever received power is asked for."""
+    if attenuation_db is None:
+        return "attenuator unknown, taken as 0 dB"
+    if attenuation_db < 0.0:
+        return f"attenuator at 0.00 dB and {-attenuation_db:.2f} dB more light asked for than it would pass"
+    return f"attenuator at {min(attenuation_db, maximum_db):.2f} dB"
 
 
 def _source_words(name: str, on: bool | None, power_dbm: float | None) -> str:
@@ -93,8 +102,8 @@ def _source_words(name: str, on: bool | None, power_dbm: float | None) -> str:
     return f"{name} unknown, taken as its highest" if power_dbm is None else f"{name} at {power_dbm:.2f} dBm"
 
 
-def refuse_if_over(bench: Bench, state: LightState, point: int | None = None) -> None:
-    """SafetyRefusal that names planes, limits, computed powers and point; only another bench file lifts it."""
+def refuse_if_over(bench: Bench, state: LightState, point: int | None = None, asked: Iterable[Setting] = ()) -> None:
+    """SafetyRefusal that names planes, limits, powers and what a point `asked`; only another bench file lifts it."""
     over = [power for power in worst_case(bench, state, point) if _is_over(power)]
     if not over:
         return
@@ -102,11 +111,17 @@ def refuse_if_over(bench: Bench, state: LightState, point: int | None = None) ->
         f"the {power.plane} could see {power.power_dbm:.2f} dBm, above its limit of {power.limit_dbm:.2f} dBm"
         for power in over
     )
-    where = "" if point is None else f"Point {point}: "
+    settings = ", ".join(f"{each.term} {_value_words(each)}" for each in asked)
+    where = "" if point is None else f"Point {point}" + (f" ({settings})" if settings else "") + ": "
     raise SafetyRefusal(
         f"{where}{planes} ({over[0].situation}; sources at their upper tolerance, least loss). "
         "Nothing was set. Ask for less power, or add loss and say so in the bench file."
     )
+
+
+def _value_words(setting: Setting) -> str:
+    value = setting.value
+    return words(value, TERMS[setting.term].unit) if isinstance(value, float) else str(value)
 
 
 def _is_over(power: PlanePower) -> bool:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping
 
 from owlight.bench import Bench, attenuation_for, lo_laser_power_dbm, lowest_received_power_dbm
 from owlight.driver import Driver
@@ -22,6 +22,8 @@ _BEHIND = {
 _OF_ATTENUATOR = {ATTENUATION, RECEIVED_POWER}
 _SAME_WAVELENGTH_NM = 1e-6
 Found = Iterator[tuple[str, str]]
+Outside = tuple[Term, float, str]
+"""A setting, its value, and what it is outside of."""
 
 
 def misfits(
@@ -35,11 +37,10 @@ def misfits(
     asked = _asked(bench, sequence, settings, points)
     found = [
         *_roles(bench, sequence, settings),
-        *_ranges(drivers, asked),
-        *_beliefs(bench, asked),
+        *_drivers(drivers, asked),
+        *_at_once((*_ranges(drivers, asked), *_beliefs(bench, asked), *_calibration(bench, asked))),
         *_reach(bench, sequence, points),
         *_planes(bench, sequence),
-        *_calibration(bench, asked),
         *_wavelengths(sequence, points),
         *_unlit(sequence, points),
         *_left_behind(sequence),
@@ -72,56 +73,87 @@ def _roles(bench: Bench, sequence: Sequence, settings: tuple[Setting, ...]) -> F
             yield key, f"needs the role {role}, which the bench does not have"
 
 
-def _ranges(drivers: Mapping[str, Driver], asked: tuple[Setting, ...]) -> Found:
+def _drivers(drivers: Mapping[str, Driver], asked: tuple[Setting, ...]) -> Found:
     for setting in asked:
         driver = drivers.get(setting.term.role)
-        if driver is None:
-            continue
-        if not driver.knows(setting.term):
+        if driver is not None and not driver.knows(setting.term):
             yield str(setting.term), f"is not in the driver {driver.driver}"
-            continue
-        limits = driver.range_of(setting.term)
+
+
+def _at_once(outside: Iterable[Outside]) -> Found:
+    """One line a term and cause, however many values a sweep has."""
+    causes: dict[tuple[Term, str], list[float]] = {}
+    for term, value, why in outside:
+        causes.setdefault((term, why), []).append(value)
+    for (term, why), values in causes.items():
+        low, high = (words(end, TERMS[term].unit) for end in (min(values), max(values)))
+        told = f"{low} is" if len(values) == 1 else f"{len(values)} values from {low} to {high} are"
+        yield str(term), f"{told} {why}"
+
+
+def _ranges(drivers: Mapping[str, Driver], asked: tuple[Setting, ...]) -> Iterator[Outside]:
+    for setting in asked:
+        driver = drivers.get(setting.term.role)
+        limits = driver.range_of(setting.term) if driver is not None and driver.knows(setting.term) else None
         if limits is None or isinstance(setting.value, str | bool):
             continue
         unit = TERMS[setting.term].unit
         low, high = limits
         if not low <= setting.value <= high:
             span = f"{words(low, unit)} to {words(high, unit)}"
-            yield str(setting.term), f"{words(setting.value, unit)} is outside the instrument's range, {span}"
+            yield setting.term, setting.value, f"outside the instrument's range, {span}"
 
 
-def _beliefs(bench: Bench, asked: tuple[Setting, ...]) -> Found:
+def _beliefs(bench: Bench, asked: tuple[Setting, ...]) -> Iterator[Outside]:
     """What the bench file says of its own instruments; their worst cases were computed with it."""
     for setting in asked:
         role = bench.role.get(setting.term.role)
         maximum_db = bench.light_path.attenuator_maximum_db
         if setting.term == ATTENUATION and not 0.0 <= float(setting.value) <= maximum_db:
-            yield str(ATTENUATION), f"{words(float(setting.value), 'dB')} is outside 0 dB to {words(maximum_db, 'dB')}"
+            yield setting.term, float(setting.value), f"outside 0 dB to {words(maximum_db, 'dB')}"
         if role is None or role.highest_power_dbm is None or setting.term.name != "power":
             continue
         if float(setting.value) > role.highest_power_dbm:
             highest = f"the bench's highest_power of {words(role.highest_power_dbm, 'dBm')}"
-            yield str(setting.term), f"{words(float(setting.value), 'dBm')} is above {highest}"
+            yield setting.term, float(setting.value), f"above {highest}"
 
 
 def _reach(bench: Bench, sequence: Sequence, points: tuple[Point, ...]) -> Found:
+    """One line a cause: which points ask for what, and what is possible."""
     fixed = {setting.term: setting.value for setting in sequence.settings}
     lowest_dbm = lowest_received_power_dbm(bench)
     maximum_db = bench.light_path.attenuator_maximum_db
+    causes: dict[str, list[tuple[int, float]]] = {}
     for point in points:
         received, signal = point.value(RECEIVED_POWER), point.value(SIGNAL_POWER)
         if signal is None:  # 0 dBm is a power like any other
             signal = fixed.get(SIGNAL_POWER)
         if received is None or signal is None:
             continue
+        asked = (point.index, float(received))
         attenuation_db = attenuation_for(bench, float(received), float(signal))
-        asked = f"point {point.index} asks for {words(float(received), 'dBm')}, which"
         if not 0.0 <= attenuation_db <= maximum_db:
             high_dbm = float(received) + attenuation_db
             span = f"{high_dbm - maximum_db:.2f} to {high_dbm:.2f} dBm"
-            yield str(RECEIVED_POWER), f"{asked} the attenuator cannot give; it reaches {span}"
+            causes.setdefault(f"the attenuator reaches {span}", []).append(asked)
         if lowest_dbm is not None and float(received) < lowest_dbm:
-            yield str(RECEIVED_POWER), f"{asked} the tap cannot measure: below ten times the meter's floor"
+            said = f"the tap measures from {lowest_dbm:.2f} dBm on, ten times the meter's floor"
+            causes.setdefault(said, []).append(asked)
+    swept = next((place for place, axis in enumerate(sequence.axes, 1) if axis.term == RECEIVED_POWER), None)
+    key = str(RECEIVED_POWER) if swept is None else f"sweep[{swept}]"
+    for why, places in causes.items():
+        yield key, f"{_asking(places)}; {why}"
+
+
+def _asking(places: list[tuple[int, float]]) -> str:
+    first, last = places[0][0], places[-1][0]
+    low, high = (words(end, "dBm") for end in (min(p for _, p in places), max(p for _, p in places)))
+    if len(places) == 1:
+        return f"point {first} asks for {low}"
+    many = (
+        f"points {first} to {last}" if last - first + 1 == len(places) else f"{len(places)} of points {first} to {last}"
+    )
+    return f"{many} ask for {low} to {high}"
 
 
 def _planes(bench: Bench, sequence: Sequence) -> Found:
@@ -132,12 +164,12 @@ def _planes(bench: Bench, sequence: Sequence) -> Found:
         yield "signal.polarisations", f"the receiver has lanes for {bench.receiver.polarisations}"
 
 
-def _calibration(bench: Bench, asked: tuple[Setting, ...]) -> Found:
+def _calibration(bench: Bench, asked: tuple[Setting, ...]) -> Iterator[Outside]:
     record = bench.plane_minus_tap
     for setting in asked:
         if setting.term == _WAVELENGTH and abs(float(setting.value) - record.wavelength_nm) > record.wavelength_span_nm:
             span = f"{words(record.wavelength_nm, 'nm')} within {words(record.wavelength_span_nm, 'nm')}"
-            yield str(_WAVELENGTH), f"{words(float(setting.value), 'nm')} is outside the calibration, {span}"
+            yield _WAVELENGTH, float(setting.value), f"outside the calibration, {span}"
 
 
 def _wavelengths(sequence: Sequence, points: tuple[Point, ...]) -> Found:

@@ -87,7 +87,8 @@ def refuse_over_limits(bench: Bench, sequence: Sequence, points: tuple[Point, ..
     """SafetyRefusal where a limit could be exceeded, told at the point that exceeds one the most."""
     states = list(light_states(bench, sequence, points))
     state, index = max(states, key=lambda each: _excess_db(bench, each[0]))
-    refuse_if_over(bench, state, index)
+    asked = next((point.settings for point in points if point.index == index), ())
+    refuse_if_over(bench, state, index, asked)
 
 
 def _excess_db(bench: Bench, state: LightState) -> float:
