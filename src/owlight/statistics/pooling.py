@@ -24,7 +24,13 @@ FEW_ERRORS = "fewer than 10 errors"
 
 
 def groups(stays: Iterable[Stay]) -> tuple[str, ...]:
-    """The names of the curves, in the order in which they were first measured."""
+    """The names of the curves, in the order in which they were first measured.
+
+    >>> def stay(order, group):
+    ...     return Stay(0, 1, order, group, False, "pass", 1e-7, 0.01, None, None, (), 1, 1)
+    >>> groups([stay(2, "lo_power 12 dBm"), stay(1, "lo_power 9 dBm")])
+    ('lo_power 9 dBm', 'lo_power 12 dBm')
+    """
     return tuple(dict.fromkeys(stay.group for stay in sorted(stays, key=lambda stay: stay.order) if not stay.reference))
 
 
@@ -33,6 +39,14 @@ def pool(stays: Iterable[Stay], threshold_ber: float | None = None) -> tuple[Cur
 
     A stay measured again because of its result is pooled with the original. Without a threshold no point is fitted.
     A point of which no capture locked has 0 bits, no BER, and the interval from 0 to 1.
+
+    >>> from owlight.vocabulary.captures import Tributary
+    >>> def stay(attempt, errors):
+    ...     counts = (Tributary("I", 10_000, errors), Tributary("Q", 10_000, 0))
+    ...     return Stay(0, attempt, attempt, "", False, "pass", 1e-7, 0.01, None, None, counts, 1, 1)
+    >>> (point,) = pool([stay(1, 12), stay(2, 8)])
+    >>> point.errors, point.bits, point.ber, round(point.received_power_dbm, 6)
+    (20, 40000, 0.0005, -40.0)
     """
     by_point: dict[tuple[str, int], list[Stay]] = {}
     curve = sorted((stay for stay in stays if not stay.reference), key=lambda stay: stay.order)
@@ -44,7 +58,13 @@ def pool(stays: Iterable[Stay], threshold_ber: float | None = None) -> tuple[Cur
 
 
 def counted(stay: Stay) -> tuple[int, int]:
-    """Errors and bits of all tributaries."""
+    """Errors and bits of all tributaries.
+
+    >>> from owlight.vocabulary.captures import Tributary
+    >>> counts = (Tributary("I", 100, 3), Tributary("Q", 100, 4))
+    >>> counted(Stay(0, 1, 0, "", False, "pass", 1e-7, 0.01, None, None, counts, 1, 1))
+    (7, 200)
+    """
     return sum(t.errors for t in stay.tributaries), sum(t.bits for t in stay.tributaries)
 
 

@@ -72,6 +72,22 @@ def estimate(request: SensitivityRequest) -> Sensitivity | Reason:
 
     The statistical interval is that of Student's t, or of a parametric bootstrap where b or c ends at zero. The total
     one adds `request.common` and the meter's zero once, with the coverage factor of the effective degrees of freedom.
+
+    >>> from owlight.quantity import watts
+    >>> from owlight.theory import ber_of_snr_db, required_snr_db
+    >>> from owlight.vocabulary.captures import Tributary
+    >>> ber, at_threshold_db = ber_of_snr_db("QPSK"), required_snr_db("QPSK", 3.8e-3)
+    >>> def stay(order):                                       # in nine steps across -38 dBm, where the threshold is
+    ...     power_dbm = -40.0 + 0.5 * (order % 9)
+    ...     errors = round(100_000 * float(ber(at_threshold_db + power_dbm + 38.0)))
+    ...     counts = (Tributary("I", 100_000, errors), Tributary("Q", 100_000, errors))
+    ...     watt = watts(power_dbm)
+    ...     return Stay(order % 9, 1 + order // 9, order, "", False, "pass", watt, 0.01, watt, watt, counts, 1, 1)
+    >>> found = estimate(SensitivityRequest(tuple(map(stay, range(18))), 3.8e-3, ber))
+    >>> round(found.received_power_dbm, 2), found.low_dbm < -38.0 < found.high_dbm, found.extrapolated
+    (-38.0, True, False)
+    >>> estimate(SensitivityRequest((stay(0),), 3.8e-3, ber)).words[:42]
+    '1 stays at 1 powers lie near the threshold'
     """
     points = [point for point in pool(request.stays, request.threshold_ber) if point.fitted]
     chosen = {point.point for point in points}
@@ -207,7 +223,11 @@ def _zero_u_db(request: SensitivityRequest, stays: tuple[Stay, ...], fitted: Fit
 
 
 def zero_at_plane_w(stays: tuple[Stay, ...], meter_zero_u_w: float | None) -> float:
-    """The zero's uncertainty carried from the meter to the reference plane by the stays' own ratio of the two."""
+    """The zero's uncertainty carried from the meter to the reference plane by the stays' own ratio of the two.
+
+    >>> zero_at_plane_w((Stay(0, 1, 0, "", False, "pass", 1e-7, 0.01, 9e-7, 9e-7, (), 1, 1),), 9e-12)
+    1e-12
+    """
     if not meter_zero_u_w:
         return 0.0
     ratios = []

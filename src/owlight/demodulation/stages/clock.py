@@ -50,6 +50,11 @@ def band_edges(spectra: Complex, apart: int, centre_bins: int, half_width: int) 
     """Correlation of bins `apart` bins apart around a carrier at `centre_bins`: (blocks, polarisations, polarisations).
 
     spectra: (polarisations, blocks, length).
+
+    >>> spectra = np.zeros((1, 1, 16), np.complex64)
+    >>> spectra[0, 0, 4], spectra[0, 0, -4] = 2j, 3           # the two edges of a band of 8 bins
+    >>> band_edges(spectra, 8, 0, 1).tolist()
+    [[[6j]]]
     """
     length = spectra.shape[-1]
     upper = centre_bins + apart - apart // 2 + np.arange(-half_width, half_width + 1)

@@ -31,7 +31,7 @@ class Counts:
     errors_without_slips: int
 
 
-def expected_signs(match: Match, reference: Reference, at: npt.NDArray[np.intp]) -> Signs:
+def _expected_signs(match: Match, reference: Reference, at: npt.NDArray[np.intp]) -> Signs:
     """What a matched tributary should show at symbols `at` of its output, -1 or 1."""
     one = reference.patterns[reference.source[match.expected]]
     return np.asarray(one[(match.start + at) % len(one)] * np.int8(match.sign))
@@ -47,7 +47,7 @@ def count(y: Complex, pair: Sequence[Match], reference: Reference, at: npt.NDArr
     >>> found.bits, found.errors
     (12, (4, 0))
     """
-    i, q = (expected_signs(match, reference, at) for match in pair)
+    i, q = (_expected_signs(match, reference, at) for match in pair)
     wrong_i, wrong_q = (y.real < 0) != (i < 0), (y.imag < 0) != (q < 0)
     sent = (i + 1j * q).astype(np.complex64) * np.float32(np.sqrt(0.5))
     errors = (int(np.count_nonzero(wrong_i)), int(np.count_nonzero(wrong_q)))
@@ -80,6 +80,14 @@ def unrepeated(
 
     It matters only where the labels end and begin anew, so the one with the fewest errors over all is taken; with so
     few to choose from and so many symbols, noise cannot look like one.
+
+    >>> whole = np.array([[1, 1, -1, 1, 1, -1, 1], [1, -1, -1, 1, -1, -1, 1]], np.int8)       # 3 symbols, over and over
+    >>> reference = Reference(whole, (0, 1), (0, 0), True, 3)
+    >>> y = (whole[0] + 1j * whole[1]).astype(np.complex64)[None, :]
+    >>> late = np.roll(y, -3, axis=1)                         # the record began with the second repetition
+    >>> found = unrepeated(late, (Match(0, 0, 1, 1.0, 0.0, 0), Match(1, 0, 1, 1.0, 0.0, 0)), reference, np.arange(7))
+    >>> [match.start for match in found]
+    [3, 3]
     """
     length = reference.patterns.shape[1]
     rows = np.stack([y.real, y.imag], axis=1).reshape(len(matches), -1) < 0
@@ -88,7 +96,7 @@ def unrepeated(
         return tuple(replace(match, start=(match.start + by) % length) for match in matches)
 
     def errors(by: int) -> int:
-        expected = [expected_signs(match, reference, at) < 0 for match in moved(by)]
+        expected = [_expected_signs(match, reference, at) < 0 for match in moved(by)]
         return sum(int(np.count_nonzero(row != one)) for row, one in zip(rows, expected, strict=True))
 
     steps = range(0, length, reference.repeats_after)

@@ -69,7 +69,7 @@ def _largest_prime(number: int) -> int:
     return max(largest, number)
 
 
-def first_position(front: Front, overlap: int) -> float:
+def _first_position(front: Front, overlap: int) -> float:
     """Where in the lanes' samples the first sample of the result lies."""
     symbol = front.clock.samples_a_symbol
     return front.clock.first_sample + symbol * float(np.ceil(overlap / 4 - front.clock.first_sample / symbol))
@@ -80,12 +80,18 @@ def matched_filter(z: Complex, front: Front, block: int = 4096, overlap: int = 2
 
     z is (polarisations, samples). The carrier is moved to zero by `front.centre_hz`, rounded to a whole bin
     (`carrier_turns`). Symbols whose pulse is cut by the record's ends are left out.
+
+    >>> tone = np.exp(2j * np.pi * 0.05 * np.arange(20_000)).astype(np.complex64)[None, :]      # 4 GHz at 80 GS/s
+    >>> front = Front(80e9, 32e9, 0.1, (0.0, 0.0), np.eye(2)[None], 0.0, ClockEstimate(0.0, 2.5, 0.0, 0.0, 1.0))
+    >>> found = matched_filter(tone, front)
+    >>> found.shape[0], round(float(np.angle(found[0, 101] / found[0, 100])) / (2 * np.pi) * 64, 3)
+    (1, 4.0)
     """
     length, out = block_lengths(front.clock.samples_a_symbol, block)
     margin = overlap // 2
     hop = out - 2 * margin
     step = front.clock.samples_a_symbol / 2
-    first = first_position(front, overlap)
+    first = _first_position(front, overlap)
     total = int((z.shape[1] - margin * step - first) / step) & ~1
     shift = round(front.centre_hz / front.sample_rate_hz * length)
     straight, mirrored, kept = _responses(front, length, out, shift)
@@ -130,7 +136,7 @@ def carrier_turns(front: Front, block: int, overlap: int) -> tuple[float, float]
     """
     length, _ = block_lengths(front.clock.samples_a_symbol, block)
     turn = 2 * np.pi * round(front.centre_hz / front.sample_rate_hz * length) / length
-    return turn * first_position(front, overlap), turn * front.clock.samples_a_symbol / 2
+    return turn * _first_position(front, overlap), turn * front.clock.samples_a_symbol / 2
 
 
 def _responses(front: Front, length: int, out: int, shift: int) -> tuple[Complex, Complex, npt.NDArray[np.int64]]:

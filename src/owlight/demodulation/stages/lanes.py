@@ -56,7 +56,7 @@ def block_spectra(z: Complex, length: int) -> Complex:
     return np.asarray(scipy.fft.fft(z[:, : blocks * length].reshape(len(z), blocks, length), axis=2))
 
 
-def lane_spectra(spectra: Complex, bins: npt.NDArray[np.intp]) -> tuple[Complex, Complex]:
+def _lane_spectra(spectra: Complex, bins: npt.NDArray[np.intp]) -> tuple[Complex, Complex]:
     """Spectra of I and of Q at the given bins, from those of I + jQ."""
     straight, mirrored = spectra[..., bins], np.conj(spectra[..., -bins % spectra.shape[-1]])
     return (straight + mirrored) / 2, (straight - mirrored) / 2j
@@ -93,7 +93,7 @@ def orthonormalise(
     """
     length = spectra.shape[-1]
     bins = np.arange(1, max(2, min(length // 2, int(highest_hz / sample_rate_hz * length))))
-    i, q = lane_spectra(spectra, bins)
+    i, q = _lane_spectra(spectra, bins)
     skews = np.asarray(skews_s, dtype=np.float64).reshape(-1, 2)
     turn = deskew(skews[:, 0] - skews[:, 1], bins * (sample_rate_hz / length))
     weight = 2.0 / (length**2 * spectra.shape[1])

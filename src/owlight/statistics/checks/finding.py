@@ -39,4 +39,5 @@ def certain(name: str, subject: str, statistic: float, limit: float, wrong: bool
 
 
 def not_evaluated(name: str, subject: str, words: str) -> Check:
+    """A check for which something was missing: it is neither fine nor bad, and is told."""
     return Check(name, subject, None, None, NOT_EVALUATED, words)
