@@ -12,6 +12,7 @@ from owlight.bench import LightState
 from owlight.errors import InstrumentError
 from owlight.instrument.open_bench import OpenBench
 from owlight.plan import PlanRequest, light_at_start, make_plan
+from owlight.quantity import dbm
 from owlight.run.apply import apply_settings, of_attenuator
 from owlight.run.attended import AttendedClock, StopRequests
 from owlight.run.night import Night
@@ -153,3 +154,46 @@ def test_fixed_attenuation_survives_a_raise(joined, tmp_path: Path) -> None:
             apply_settings(night, (*of_attenuator(plan), *point.settings))
             assert bench.light.attenuation_db == pytest.approx(25.0)
             assert bench.light.signal_power_dbm == point.settings[0].value
+
+
+def test_swept_wavelengths_change_in_one_dark_action(joined, tmp_path: Path) -> None:
+    """Each laser keeps the wavelength it was given, and neither is tuned while anything is lit."""
+    sweep = """setting = "local_oscillator.wavelength"
+values = ["1550.12 nm", "1550.2 nm"]
+[[sweep]]
+setting = "signal_laser.wavelength"
+values = ["1550.12 nm", "1550.3 nm"]"""
+    plan = plan_with(joined, '"signal_laser.power" = "10 dBm"\nlo_power = "10 dBm"', sweep)
+    laser = {role: joined.simulated[role] for role in ("signal_laser", "local_oscillator")}
+    lit_while_tuned: list[str] = []
+
+    def watch(role: str, message: bytes) -> None:
+        if message.startswith(b"SOUR:WAV ") and any(each.value("output") for each in laser.values()):
+            lit_while_tuned.append(role)
+
+    for role in laser:
+        joined.spoil[role] = lambda message, role=role: watch(role, message)
+    with joined.open(tmp_path) as bench:
+        night = night_on(joined, bench, plan)
+        prepare(night)
+        for point in (plan.points[3], plan.points[1], plan.points[1], plan.points[2]):
+            apply_settings(night, point.settings)
+            lo_nm, signal_nm = (setting.value for setting in point.settings)
+            assert laser["local_oscillator"].value("wavelength") == pytest.approx(lo_nm)
+            assert laser["signal_laser"].value("wavelength") == pytest.approx(signal_nm)
+            assert bench.light.signal_on is True and bench.light.lo_on is True
+    assert lit_while_tuned == []
+
+
+def test_received_power_may_be_a_setting(joined, tmp_path: Path) -> None:
+    """One power for all stays; a swept source does not move it."""
+    sweep = 'setting = "lo_power"\nvalues = ["5 dBm", "9 dBm"]'
+    plan = plan_with(joined, '"signal_laser.power" = "10 dBm"\nreceived_power = "-35 dBm"', sweep)
+    with joined.open(tmp_path) as bench:
+        bench.set(Term("pattern_source", "output"), True)
+        night = night_on(joined, bench, plan)
+        prepare(night)
+        for point in plan.points:
+            apply_settings(night, (*of_attenuator(plan), *point.settings))
+            # grid of the attenuator and noise of the reading, both below 0.03 dB
+            assert dbm(joined.truth.truth()["receiver_power_w"]) == pytest.approx(-35.0, abs=0.06)

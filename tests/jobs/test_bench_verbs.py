@@ -5,6 +5,7 @@ from __future__ import annotations
 import re
 import socket
 from collections.abc import Iterator
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -12,6 +13,7 @@ import pytest
 
 from owlight import shipped, simulation
 from owlight.cli.result import print_safe_state
+from owlight.instrument.instrument import Instrument
 from owlight.jobs.identify import identify
 from owlight.jobs.safe import make_safe
 
@@ -51,6 +53,16 @@ def test_whoever_answers_may_be_simulated(served: str) -> None:
     safe = make_safe(served)
     assert safe["confirmed"] and safe["simulated"] is True
     assert safe["words"] == ""  # it is this one that was made safe
+
+
+def test_instrument_without_serial_number_is_taken_on_trust(served: str, monkeypatch: pytest.MonkeyPatch) -> None:
+    """As a run and the guard take it; that nothing proves it is said."""
+    told = Instrument.identify
+    for serial in ("0", "", "OWL-XX-0009"):
+        monkeypatch.setattr(Instrument, "identify", lambda self, s=serial: replace(told(self), serial_number=s))
+        answers = identify(served)["instruments"]
+        assert all(answer["as_planned"] is (serial != "OWL-XX-0009") for answer in answers)
+        assert all(("rests on the bench file alone" in a["words"]) is a["as_planned"] for a in answers)
 
 
 def test_fresh_simulation_is_told_from_the_bench() -> None:

@@ -194,6 +194,14 @@ def test_zero_dbm_is_a_power(plan_of: PlanOf) -> None:
         plan_of("lo_power_map", swept)
 
 
+def test_reach_of_a_fixed_received_power(plan_of: PlanOf) -> None:
+    swept = {'"signal_laser.output" = true ': 'received_power = "-13 dBm" ',
+             'setting = "attenuator.attenuation"': 'setting = "receiver.gain"',
+             '"15 dB"': '"0 dB"', '"30 dB"': '"3 dB"'}  # fmt: skip
+    with pytest.raises(InputError, match=r"ask for -13 dBm.*the attenuator reaches -73\.60 to -13\.60 dBm"):
+        plan_of("power_log", swept)
+
+
 @pytest.mark.parametrize("role", ["power_meter", "attenuator"])
 def test_wavelength_beside_the_signal_is_refused(plan_of: PlanOf, role: str) -> None:
     own = f'"{role}.wavelength" = '

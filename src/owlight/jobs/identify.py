@@ -9,6 +9,7 @@ from owlight.instrument.instrument import Instrument
 from owlight.jobs.bench_session import Surroundings, is_simulated, surroundings
 from owlight.jobs.resolve import Resolved, resolve, world_path
 from owlight.link import Link, Stamper
+from owlight.scpi import may_be, tells_serial
 from owlight.vocabulary.events import Event
 
 Json = dict[str, Any]
@@ -39,8 +40,10 @@ def _ask(role: str, resolved: Resolved, around: Surroundings) -> Json:
     finally:
         link.close()
     who = f"{found.maker}, {found.model}, serial {found.serial_number}, firmware {found.firmware}"
-    if planned and found.serial_number != planned:
+    if not may_be(found.serial_number, planned):
         return _answer(role, around, "another instrument", False, f"{who}; the bench file expects serial {planned}")
+    if planned and not tells_serial(found.serial_number):
+        who += f"; that it is {planned} rests on the bench file alone"
     return _answer(role, around, "as planned", True, who)
 
 

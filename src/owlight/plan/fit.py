@@ -125,9 +125,8 @@ def _reach(bench: Bench, sequence: Sequence, points: tuple[Point, ...]) -> Found
     maximum_db = bench.light_path.attenuator_maximum_db
     causes: dict[str, list[tuple[int, float]]] = {}
     for point in points:
-        received, signal = point.value(RECEIVED_POWER), point.value(SIGNAL_POWER)
-        if signal is None:  # 0 dBm is a power like any other
-            signal = fixed.get(SIGNAL_POWER)
+        values = fixed | {setting.term: setting.value for setting in point.settings}
+        received, signal = values.get(RECEIVED_POWER), values.get(SIGNAL_POWER)
         if received is None or signal is None:
             continue
         asked = (point.index, float(received))
