@@ -80,6 +80,19 @@ def test_unknown_is_never_safer(on: bool, power: float, lo_on: bool, lo: float, 
     assert all(unsure[plane] >= power_dbm - 1e-9 for plane, power_dbm in certain.items())
 
 
+def test_one_laser_in_two_roles_lights_both() -> None:
+    """A laser that carries the data and is the local oscillator too: its output is on for both or for none."""
+    lo = replace(BENCH.role["local_oscillator"], serial_number=BENCH.role["signal_laser"].serial_number)
+    one = replace(BENCH, role={**BENCH.role, "local_oscillator": lo})
+    both = powers(LightState(True, 12.0, True, 12.0, 24.4), one)
+    assert powers(LightState(True, 12.0, False, 12.0, 24.4), one) == both
+    assert powers(LightState(False, 7.0, True, 12.0, 24.4), one) == both
+    # a power that is not known of either role may be the highest: 16 + 0.5 - 0.7
+    assert powers(LightState(True, 7.0, False, None, 24.4), one)[LO_INPUT] == pytest.approx(15.8)
+    assert powers(LightState(False, 12.0, False, 12.0, 24.4), one) == {}
+    assert LO_INPUT not in powers(LightState(True, 12.0, False, 12.0, 24.4))  # two lasers
+
+
 def test_dark_sources_reach_no_plane() -> None:
     assert powers(LightState(signal_on=False, lo_on=False)) == {}
 

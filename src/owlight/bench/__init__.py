@@ -3,6 +3,7 @@
 from owlight.bench.calibration import common_uncertainty, lowest_received_power_dbm, received_power_dbm
 from owlight.bench.light import (
     LightState,
+    as_it_shines,
     attenuation_for,
     fixed_pad_words,
     lo_laser_power_dbm,
@@ -18,6 +19,7 @@ __all__ = [
     "Lane",
     "LightState",
     "Role",
+    "as_it_shines",
     "attenuation_for",
     "common_uncertainty",
     "fixed_pad_words",

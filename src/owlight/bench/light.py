@@ -31,11 +31,32 @@ class LightState:
 
 def worst_case(bench: Bench, state: LightState, point: int | None = None) -> tuple[PlanePower, ...]:
     """The highest power at each plane light could reach: upper tolerance of the sources, least loss of the path."""
+    state = as_it_shines(bench, state)
     powers_dbm = _powers_dbm(bench, state)
     return tuple(
         PlanePower(plane, _situation(bench, state), power_dbm, bench.limit[plane].highest_dbm, point)
         for plane, power_dbm in powers_dbm.items()
     )
+
+
+def as_it_shines(bench: Bench, state: LightState) -> LightState:
+    """The state itself, but where one laser serves both roles: then either role lights both, at the worse power."""
+    if not _is_one_laser(bench):
+        return state
+    outputs = (state.signal_on, state.lo_on)
+    powers = (state.signal_power_dbm, state.lo_power_dbm)
+    on = True if True in outputs else None if None in outputs else False
+    power_dbm = None if None in powers else max(power for power in powers if power is not None)
+    return replace(state, signal_on=on, lo_on=on, signal_power_dbm=power_dbm, lo_power_dbm=power_dbm)
+
+
+def _is_one_laser(bench: Bench) -> bool:
+    signal, lo = bench.role.get("signal_laser"), bench.role.get("local_oscillator")
+    if signal is None or lo is None:
+        return False
+    if signal.serial_number and lo.serial_number:
+        return signal.serial_number == lo.serial_number
+    return signal.resource == lo.resource and not signal.resource.startswith("simulated ")
 
 
 def _powers_dbm(bench: Bench, state: LightState) -> dict[str, float]:

@@ -6,7 +6,7 @@ import math
 from dataclasses import replace
 from typing import Any
 
-from owlight.bench import Bench, LightState, refuse_if_over
+from owlight.bench import Bench, LightState, as_it_shines, refuse_if_over
 from owlight.errors import SafetyRefusal
 from owlight.vocabulary.values import Term, Value
 
@@ -59,7 +59,8 @@ class LightKeeper:
         stands = getattr(self.state, FIELDS[term])
         if isinstance(value, bool):
             return value and stands is not True
-        lit = self.state.lo_on if term == LO_POWER else self.state.signal_on
+        shines = as_it_shines(self._bench, self.state)
+        lit = shines.lo_on if term == LO_POWER else shines.signal_on
         if lit is False:
             return False
         if term == ATTENUATION:

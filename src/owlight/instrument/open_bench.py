@@ -10,7 +10,7 @@ from types import TracebackType
 import numpy as np
 
 from owlight import shipped
-from owlight.bench import Bench, LightState, lo_laser_power_dbm
+from owlight.bench import Bench, LightState, as_it_shines, lo_laser_power_dbm
 from owlight.clock import Clock
 from owlight.driver import Driver
 from owlight.errors import BenchError, InstrumentError
@@ -144,7 +144,8 @@ class OpenBench:
         return self.set_at_once(term, value, point)
 
     def _could_be_lit(self, role: str) -> bool:
-        return (self.light.signal_on if role == "signal_laser" else self.light.lo_on) is not False
+        shines = as_it_shines(self.paper, self.light)
+        return (shines.signal_on if role == "signal_laser" else shines.lo_on) is not False
 
     def judge(self, term: Term, value: Value, point: int | None = None) -> None:
         self._keeper.judge(term, value, point)
