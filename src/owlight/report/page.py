@@ -79,7 +79,8 @@ def _sections(facts: Facts) -> list[Markup]:
         _section("The stays", _order(facts)) if alone else None,
         _section("Findings", tables.findings(facts) if facts.checks else element("p", unasked(facts))),
         _section("Points", tables.points(facts), element("p", _POINTS)),
-        None if alone else readings,
+        # beside a curve they are background: on paper they would cost the third sheet
+        None if alone or readings is None else element("div", readings, class_="on-screen"),
         _section("Uncertainty", tables.budget(facts), element("p", tables.calibration(facts))),
         _section("Instruments", tables.instruments(facts)),
         _section("To repeat it", tables.repeat(facts)),
