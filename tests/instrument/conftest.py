@@ -13,7 +13,7 @@ from owlight import shipped
 from owlight.bench import Bench, read_bench
 from owlight.driver import Driver, read_driver
 from owlight.instrument.instrument import Instrument
-from owlight.instrument.open_bench import OpenBench, open_bench
+from owlight.instrument.open_bench import Access, OpenBench, open_bench
 from owlight.link import Link, Stamper, memory_opener
 from owlight.quantity import watts
 from owlight.simulation.device.bench_time import BenchTime
@@ -122,15 +122,8 @@ class Joined:
         return Instrument(role, self.drivers[role], link, self.events.append, stamper, self.clock)
 
     def open(self, locks: Path) -> OpenBench:
-        return open_bench(
-            self.paper,
-            self.drivers,
-            self.resources,
-            self.events.append,
-            self.clock,
-            opener=self.opener,
-            lock_folder=locks,
-        )
+        access = Access(self.resources, opener=self.opener, lock_folder=locks)
+        return open_bench(self.paper, self.drivers, access, self.events.append, self.clock)
 
 
 def join(**replaced: str) -> Joined:

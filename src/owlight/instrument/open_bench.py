@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 from collections.abc import Callable, Mapping
+from dataclasses import dataclass
 from pathlib import Path
 from types import TracebackType
 
@@ -34,36 +35,39 @@ _SAMPLE_RATE = Term("oscilloscope", "sample_rate")
 _BY_ACTION = (lighting.SIGNAL_WAVELENGTH, lighting.LO_WAVELENGTH)
 
 
+@dataclass(frozen=True)
+class Access:
+    """How the instruments of a bench are reached: addresses by role, what opens one, what is called while waiting."""
+
+    resources: Mapping[str, str]
+    beat: Callable[[], None] = lambda: None
+    opener: Opener = open_visa
+    lock_folder: Path | None = None
+
+
 class OpenBench:
     """`paper` is the bench file; `light` is what read-backs have proven, None where nothing has."""
 
-    def __init__(
-        self,
-        bench: Bench,
-        drivers: Mapping[str, Driver],
-        resources: Mapping[str, str],
-        emit: Emit,
-        clock: Clock,
-        beat: Callable[[], None] = lambda: None,
-        opener: Opener = open_visa,
-    ) -> None:
+    def __init__(self, bench: Bench, drivers: Mapping[str, Driver], access: Access, emit: Emit, clock: Clock) -> None:
         self.paper = bench
         self.clock = clock
         self.roles = tuple(bench.role)
         self.stamper = Stamper(clock)
         self.identities: tuple[Identity, ...] = ()
         self._emit_event = emit
-        self._beat = beat
-        self._opener = opener
+        self._beat = access.beat
+        self._opener = access.opener
         self._keeper = LightKeeper(bench)
         self._stands: dict[Term, Value] = {}
         self._locks: list[SerialLock] = []
         self._dark_before_all = False
         self._touched = False
         self._attenuator_trusted = True
-        self._steps = safe_steps(bench, drivers, resources)
+        self._steps = safe_steps(bench, drivers, access.resources)
         self._instruments = {
-            role: Instrument(role, drivers[role], self._link(role, resources[role]), self.emit, self.stamper, clock)
+            role: Instrument(
+                role, drivers[role], self._link(role, access.resources[role]), self.emit, self.stamper, clock
+            )
             for role in self.roles
         }
 
@@ -329,20 +333,11 @@ def _lane(name: str, record: LaneRecord, driver: Driver) -> Lane:
     )
 
 
-def open_bench(
-    bench: Bench,
-    drivers: Mapping[str, Driver],
-    resources: Mapping[str, str],
-    emit: Emit,
-    clock: Clock,
-    beat: Callable[[], None] = lambda: None,
-    opener: Opener = open_visa,
-    lock_folder: Path | None = None,
-) -> OpenBench:
+def open_bench(bench: Bench, drivers: Mapping[str, Driver], access: Access, emit: Emit, clock: Clock) -> OpenBench:
     """Open, prove and lock all instruments of the bench, or none: BenchError, and nothing was set."""
-    opened = OpenBench(bench, drivers, resources, emit, clock, beat, opener)
+    opened = OpenBench(bench, drivers, access, emit, clock)
     try:
-        opened.open(lock_folder or shipped.user_cache() / "locks")
+        opened.open(access.lock_folder or shipped.user_cache() / "locks")
     except BaseException:
         opened.close()
         raise

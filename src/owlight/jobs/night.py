@@ -9,7 +9,7 @@ from pathlib import Path
 
 from owlight.errors import BenchError, InUseError, StopNow, StorageError
 from owlight.guard import Guard
-from owlight.instrument.open_bench import open_bench
+from owlight.instrument.open_bench import Access, open_bench
 from owlight.instrument.safe_state import reach_safe_state
 from owlight.jobs.bench_session import Surroundings, surroundings
 from owlight.jobs.conclude import conclude
@@ -82,7 +82,7 @@ def _night(
     confirmed = False
     try:
         try:
-            bench = open_bench(resolved.bench, resolved.drivers, around.resources, emit, clock, beat=clock.beat)
+            bench = open_bench(resolved.bench, resolved.drivers, Access(around.resources, clock.beat), emit, clock)
         except (BenchError, StopNow) as trouble:
             confirmed = True  # nothing was set here, so there is nothing for the guard to do
             clock.only_beat()
