@@ -283,6 +283,9 @@ def test_interrupted_command_has_its_status(owlight: Any, monkeypatch: pytest.Mo
         ({"state": "gave up", "findings": [], "missing": [3]}, 3),
         ({"state": "broken off", "findings": [], "missing": []}, 3),
         ({"state": "called off", "findings": [{"finding": "bad"}], "missing": [3]}, 130),
+        ({"state": "finished", "findings": [], "missing": [], "safe_state": {"confirmed": True}}, 0),
+        ({"state": "finished", "findings": [], "missing": [], "safe_state": {"confirmed": False}}, 3),
+        ({"state": "called off", "findings": [], "missing": [], "safe_state": {"confirmed": False}}, 3),
     ],
 )
 def test_status_follows_the_outcome(found: dict[str, object], status: int) -> None:

@@ -179,6 +179,15 @@ def test_orderly_end_touches_nothing(bench: dict[str, Switch], tmp_path: Path) -
     assert [switch.value for switch in bench.values()] == ["12", "1", "1"]
 
 
+def test_guard_takes_over_from_a_living_runner(bench: dict[str, Switch], tmp_path: Path) -> None:
+    """The runner could not confirm the safe state: the guard tries, and does not end who asked it to."""
+    guard = Guard.start(steps(bench), 30.0, tmp_path / "guard.jsonl", None)
+    guard.take_over()
+    found = line_of(tmp_path / "guard.jsonl")
+    assert dark(bench) and found["confirmed"] is True
+    assert found["reason"] == "the runner could not confirm the safe state"
+
+
 def test_dead_guard_is_told_once(bench: dict[str, Switch], tmp_path: Path) -> None:
     from owlight.errors import BenchError
 

@@ -336,3 +336,19 @@ def test_busy_logbook_is_told_apart(tmp_path: Path) -> None:
     """The demo goes to another folder then; any other trouble of storage ends it."""
     with Logbook.open(tmp_path), pytest.raises(BusyError):
         Logbook.open(tmp_path)
+
+
+def test_implausible_record_is_no_lost_lock(tmp_path: Path, plan: Plan, story: Any, provenance: Any) -> None:
+    """A clipped record was judged without looking at errors: it says nothing of how often the chain locks."""
+    from dataclasses import replace
+
+    with Logbook.open(tmp_path) as logbook:
+        writer = logbook.start_run(plan, provenance)
+        writer.record(story.capture(0, 1, 1))
+        writer.record(story.capture(0, 1, 2))
+        stay = story.stay(plan, 0, 1, errors=5)
+        writer.record(replace(stay, captures=(CaptureId(0, 1, 1), CaptureId(0, 1, 2))))
+        writer.close()
+    with open_reader(tmp_path) as reader:
+        (found,) = curve.stays(reader, writer.run_id)
+    assert (found.captures_locked, found.captures_total) == (1, 1)
