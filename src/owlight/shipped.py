@@ -1,4 +1,4 @@
-"""Where shipped data and the user's caches lie: a TOML by path, then the lab's folder, then what came along."""
+"""The installation: how it was started, where caches lie, shipped data - by path, then the lab's, then what came."""
 
 from __future__ import annotations
 
@@ -77,3 +77,8 @@ def numba_cache() -> None:
         folder = Path(tempfile.mkdtemp(prefix="owlight-"))  # readable by its owner only
         atexit.register(shutil.rmtree, folder, ignore_errors=True)
     os.environ["NUMBA_CACHE_DIR"] = str(folder)
+
+
+def program() -> str:
+    """How this program was started, so that a command it shows can be pasted."""
+    return os.environ.get("OWLIGHT_STARTED_AS", "owlight")

@@ -39,7 +39,7 @@ def _status() -> int:
 
     try:
         from owlight.cli.app import app
-        from owlight.cli.options import program
+        from owlight.shipped import program
 
         app(standalone_mode=True, prog_name=program())
     except SystemExit as end:

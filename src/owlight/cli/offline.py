@@ -11,6 +11,7 @@ import typer
 from owlight.cli.options import Json
 
 
+# as many parameters as the command has options
 def demodulate(
     file: Annotated[Path, typer.Argument(metavar="FILE", help="Capture: .npz with `codes`, lanes x samples, integer.")],
     symbol_rate: Annotated[str, typer.Option(metavar="RATE", help='For example "32 GBd".')],

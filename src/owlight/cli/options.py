@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import os
 from pathlib import Path
 from typing import Annotated
 
@@ -16,8 +15,3 @@ Json = Annotated[bool, typer.Option("--json", help="Print one JSON object for ot
 Seed = Annotated[int | None, typer.Option("--seed", metavar="SEED", help="Seed instead of the sequence's own.")]
 
 LOGBOOK = Path("owlight-logbook")
-
-
-def program() -> str:
-    """How this program was started, so that the commands shown can be pasted."""
-    return os.environ.get("OWLIGHT_STARTED_AS", "owlight")

@@ -8,8 +8,8 @@ from pathlib import Path
 from typing import Any
 
 from owlight.cli.drawing import draw_curve
-from owlight.cli.options import program
 from owlight.quantity import beside, words
+from owlight.shipped import program
 from owlight.vocabulary.result import Sensitivity
 
 Json = dict[str, Any]

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import itertools
 import math
-import os
 import re
 import shlex
 from collections import Counter
@@ -15,6 +14,7 @@ from owlight.report import differences
 from owlight.report.facts import Facts
 from owlight.report.markup import Inside, Markup, element, together
 from owlight.report.wording import begun, counted, level, moment, number, period, ratio, span
+from owlight.shipped import program
 from owlight.vocabulary.events import Check
 from owlight.vocabulary.result import Sensitivity
 from owlight.vocabulary.terms import RECEIVED_POWER
@@ -228,11 +228,6 @@ def _suspicious(facts: Facts) -> dict[int, list[str]]:
 
 def _again(facts: Facts) -> str:
     return f"{program()} reproduce {facts.header.run_id[:8]} --logbook {shlex.quote(str(facts.folder))}"
-
-
-def program() -> str:
-    """As this program was started, so that a command can be pasted."""
-    return os.environ.get("OWLIGHT_STARTED_AS", "owlight")
 
 
 def differs(facts: Facts, before: Facts | None) -> Answer:

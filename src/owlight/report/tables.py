@@ -7,10 +7,11 @@ import shlex
 
 from owlight.quantity import beside, scattered
 from owlight.quantity import words as quantity
-from owlight.report.answers import coverage_factor, finding_word, program
+from owlight.report.answers import coverage_factor, finding_word
 from owlight.report.facts import Facts
 from owlight.report.markup import Inside, Markup, element, table, together
 from owlight.report.wording import NOT_ASSESSED, count, counted, figure, level, number, ratio, ratio_span
+from owlight.shipped import program
 from owlight.statistics import mean_readings
 from owlight.vocabulary.events import Check
 from owlight.vocabulary.result import CurvePoint
